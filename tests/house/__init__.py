@@ -1,0 +1,1 @@
+"""The house itself: what is installed, what may import what, what lies where."""

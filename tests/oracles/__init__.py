@@ -1,0 +1,1 @@
+"""Judge plans from outside: formulations and classic results that share nothing with the planner."""

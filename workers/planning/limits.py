@@ -1,0 +1,60 @@
+"""What a plan may take, and who watches it."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from datetime import datetime
+from time import monotonic
+from typing import Protocol
+
+from schemas.job import Question
+
+SECONDS_TO_HAND_OVER = 5.0
+"""Left between the end of planning and `needed_by`, for the caller to fetch the schedule."""
+
+AUDIT_SHARE = 0.1
+"""Share of the time that solvers leave for extraction and audit."""
+
+
+@dataclass(frozen=True)
+class Limits:
+    """Seconds for model, solve and audit together, counted on `clock`, and threads for parts solved side by side."""
+
+    seconds: float
+    threads: int
+    started: float
+    clock: Callable[[], float] = monotonic
+
+    @classmethod
+    def of(
+        cls, question: Question, now: datetime, *, threads: int = 1, clock: Callable[[], float] = monotonic
+    ) -> "Limits":
+        """Take the job's time limit, cut so that the answer is there before it is needed."""
+        seconds = question.time_limit_seconds
+        if question.needed_by is not None:
+            seconds = min(seconds, (question.needed_by - now).total_seconds() - SECONDS_TO_HAND_OVER)
+        return cls(seconds, threads, clock(), clock)
+
+    def left_to_solve(self) -> float:
+        """Give the seconds solvers may still take; at or below zero there is no time left."""
+        return self.seconds * (1 - AUDIT_SHARE) - (self.clock() - self.started)
+
+
+class Watch(Protocol):
+    """Who is told how far a plan has come, and may ask it to stop."""
+
+    def progress(self, phase: str, done: float) -> None:
+        """Take note of a phase and the share of it that is done, 0 to 1."""
+
+    def is_stop_asked(self) -> bool:
+        """Tell whether the plan should end with what is in hand."""
+
+
+class Unwatched:
+    """Nobody watches."""
+
+    def progress(self, phase: str, done: float) -> None:
+        """Let it pass."""
+
+    def is_stop_asked(self) -> bool:
+        """Never ask to stop."""
+        return False

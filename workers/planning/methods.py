@@ -1,0 +1,153 @@
+"""How a request is solved: store by store, part by part, or all at once."""
+
+from collections.abc import Callable, Iterable
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, replace
+from math import inf
+
+from workers.planning.instance import Instance
+from workers.planning.joint import Solution, is_within_gap, solve_jointly
+from workers.planning.limits import Limits, Watch
+from workers.planning.parts import independent_parts
+from workers.planning.solvers.ending import Stopped
+
+LONGEST_SHARE = 4.0
+"""A part may take up to so many times its even share of the time, so that one hard part cannot starve the rest."""
+
+TIGHTER = 10.0
+SECOND_LOOKS = 3
+
+
+@dataclass(frozen=True)
+class Choice:
+    """A method by its name in the contract, the parts it solves, and why it was taken."""
+
+    method: str
+    parts: tuple[Instance, ...]
+    why: str
+
+
+@dataclass(frozen=True)
+class Found:
+    """What a method found: a solution per part, in the order of `Choice.parts`."""
+
+    choice: Choice
+    solutions: tuple[Solution, ...]
+
+    @property
+    def bound(self) -> float:
+        """Sum of the parts' bounds: a proven upper bound of the whole margin."""
+        return sum(solution.bound for solution in self.solutions)
+
+    @property
+    def infeasible_parts(self) -> list[Instance]:
+        """Parts proven to have no schedule."""
+        pairs = zip(self.choice.parts, self.solutions, strict=True)
+        return [part for part, solution in pairs if solution.stopped is Stopped.INFEASIBLE]
+
+    @property
+    def has_schedule(self) -> bool:
+        """Tell whether every part has a feasible schedule in hand."""
+        return all(solution.power_mw is not None for solution in self.solutions)
+
+
+def choose(instance: Instance, asked: str) -> Choice:
+    """Choose parts and method from the request alone."""
+    parts = tuple(independent_parts(instance))
+    alone = all(len(part.stores) <= 1 for part in parts)
+    if asked == "milp":
+        if alone:
+            return Choice("milp", (instance,), "asked for by name: one joint model")
+        return Choice("milp", parts, f"asked for by name: {_counted(parts)}")
+    if alone:
+        why = "asked for by name" if asked == "per_asset" else "nothing couples the assets"
+        return Choice("per_asset", parts, why)
+    return Choice("milp", parts, f"assets are coupled: {_counted(parts)}")
+
+
+def _counted(parts: Iterable[Instance]) -> str:
+    sizes = [len(part.stores) for part in parts]
+    return f"{len(sizes)} independent part(s), the largest with {max(sizes)} store(s)"
+
+
+def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: bool = False) -> Found:
+    """Solve every part, side by side on the threads allowed; an infeasible part ends the work early."""
+    solutions: dict[int, Solution] = {}
+    is_over = _over(solutions, limits, watch)
+
+    def one(number: int) -> None:
+        if is_over():
+            solutions[number] = _nothing(limits)
+            return
+        waiting = len(choice.parts) - len(solutions)
+        share = limits.left_to_solve() * limits.threads / waiting
+        seconds = min(limits.left_to_solve(), LONGEST_SHARE * share)
+        solutions[number] = solve_jointly(choice.parts[number], limits, seed=seed, seconds=seconds, everywhere=careful)
+        watch.progress("solving", len(solutions) / len(choice.parts))
+
+    if limits.threads == 1 or len(choice.parts) == 1:
+        for number in range(len(choice.parts)):
+            one(number)
+    else:
+        with ThreadPoolExecutor(limits.threads, thread_name_prefix="part") as pool:
+            for _ in pool.map(one, range(len(choice.parts))):
+                pass
+    found = Found(choice, tuple(solutions[number] for number in range(len(choice.parts))))
+    return _closed(found, limits, watch, seed)
+
+
+def _over(solutions: dict[int, Solution], limits: Limits, watch: Watch) -> Callable[[], bool]:
+    def is_over() -> bool:
+        proven = any(solution.stopped is Stopped.INFEASIBLE for solution in list(solutions.values()))
+        return proven or watch.is_stop_asked() or limits.left_to_solve() <= 0
+
+    return is_over
+
+
+def _nothing(limits: Limits) -> Solution:
+    stopped = Stopped.OUT_OF_TIME if limits.left_to_solve() <= 0 else Stopped.INTERRUPTED
+    return Solution(stopped, None, None, inf, 0.0, 0.0)
+
+
+def _closed(found: Found, limits: Limits, watch: Watch, seed: int) -> Found:
+    """Look again at the parts with the widest gaps while their sum is wider than the gap of the whole.
+
+    Each part is solved to the gap asked for, but margins of opposite signs cancel in the sum they are measured by.
+    """
+    instance, gap = found.choice.parts[0], found.choice.parts[0].relative_gap
+    for _ in range(SECOND_LOOKS):
+        margins = [solution.margin for solution in found.solutions]
+        if not found.has_schedule or is_within_gap(instance, sum(m for m in margins if m is not None), found.bound):
+            return found
+        gap /= TIGHTER
+        found = _second_look(found, limits, watch, seed, gap)
+    return found
+
+
+def _second_look(found: Found, limits: Limits, watch: Watch, seed: int, gap: float) -> Found:
+    solutions = list(found.solutions)
+    widest = sorted(
+        range(len(solutions)), key=lambda k: solutions[k].bound - (solutions[k].margin or 0.0), reverse=True
+    )
+    for number in widest:
+        left = limits.left_to_solve()
+        if left <= 0 or watch.is_stop_asked():
+            break
+        part = replace(found.choice.parts[number], relative_gap=gap, absolute_gap=0.0)
+        again = solve_jointly(part, limits, seed=seed, seconds=left)
+        solutions[number] = _better(solutions[number], again)
+        total = sum(solution.margin or 0.0 for solution in solutions)
+        if is_within_gap(found.choice.parts[0], total, sum(solution.bound for solution in solutions)):
+            break
+    return Found(found.choice, tuple(solutions))
+
+
+def _better(first: Solution, second: Solution) -> Solution:
+    """Keep the better schedule and the tighter bound of two solves of the same part."""
+    kept = first if second.margin is None or (first.margin or -inf) >= second.margin else second
+    return replace(
+        kept,
+        bound=min(first.bound, second.bound),
+        build_seconds=first.build_seconds + second.build_seconds,
+        solver_seconds=first.solver_seconds + second.solver_seconds,
+    )

@@ -1,0 +1,172 @@
+"""From a job to its answer: a function of its arguments, with no queue and no web."""
+
+from math import isfinite
+
+from schemas.coupling import couplings
+from schemas.diagnosis import Diagnosis
+from schemas.job import CheckJob, Job, OneWindow
+from schemas.problems import InvalidRequest
+from schemas.schedule import Schedule, Undecided, Violation
+from schemas.support import require_supported
+from workers.planning import answer
+from workers.planning.audit import Decision, Replay, replay
+from workers.planning.extraction import set_points
+from workers.planning.instance import Instance, instance_of
+from workers.planning.limits import Limits, Unwatched, Watch
+from workers.planning.methods import Choice, Found, choose, solve
+from workers.planning.screening import Finding, screen
+
+Answer = Schedule | Diagnosis | Undecided
+
+ROUND_OFF = 1e-6
+"""A margin may pass its bound by this share through round-off and the audit's tolerance; by more, a fault is ours."""
+
+
+class PlanningFault(Exception):
+    """Our own fault: a schedule that the audit refuses, or a margin above its bound; carries the evidence."""
+
+    def __init__(self, what: str, violations: list[Violation]) -> None:
+        super().__init__(what, violations)
+        self.what = what
+        self.violations = violations
+
+
+def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
+    """Plan a validated job whose documents are inline.
+
+    Raises Unsupported for what cannot be planned yet, InvalidRequest for `per_asset` on coupled assets, PlanningFault
+    where no answer can be trusted. Infeasible and out of time are answers.
+    """
+    require_supported(job)
+    if not isinstance(job, OneWindow):
+        raise ValueError("a job on one window is expected")
+    if isinstance(job, CheckJob):
+        return _checked(job, limits)
+    if job.method == "per_asset" and (faults := couplings(job)):
+        raise InvalidRequest(faults)
+    watch = watch or Unwatched()
+    watch.progress("indexing", 0.0)
+    instance = instance_of(job)
+    if findings := screen(instance):
+        return _refused(job, findings)
+    choice = choose(instance, job.method)
+    found = solve(choice, limits, watch, seed=job.seed)
+    if found.infeasible_parts:
+        return _proven_infeasible(job, found.infeasible_parts)
+    if not found.has_schedule:
+        return _undecided(job, found, limits)
+    watch.progress("auditing", 1.0)
+    return _audited(job, choice, found, limits, watch)
+
+
+def _audited(job: OneWindow, choice: Choice, found: Found, limits: Limits, watch: Watch) -> Schedule:
+    """Let the audit judge; what it refuses is solved once more with every mode apart, and never returned."""
+    replayed = replay(job, _decisions(found))
+    if replayed.verification.violations:
+        again = solve(choice, limits, watch, seed=job.seed, careful=True)
+        found = again if again.has_schedule else found
+        replayed = replay(job, _decisions(found))
+    if replayed.verification.violations:
+        raise PlanningFault("the audit refuses every schedule found", replayed.verification.violations)
+    bound = _bound_above(replayed, found.bound)
+    gap = None if bound is None else bound - replayed.margin
+    is_optimal = gap is not None and (
+        gap <= job.absolute_gap or answer.relative_gap(replayed, replayed.margin + gap) <= job.relative_gap * (1 + 1e-6)
+    )
+    return answer.schedule(
+        job, replayed, "optimal" if is_optimal else "feasible", bound, _effort(choice, found, limits)
+    )
+
+
+def _decisions(found: Found) -> dict[str, Decision]:
+    decisions = {}
+    for part, solution in zip(found.choice.parts, found.solutions, strict=True):
+        for store, power in zip(part.stores, solution.power_mw or (), strict=True):
+            decisions[store.id] = Decision(power_mw=set_points(store, power))
+    return decisions
+
+
+def _bound_above(replayed: Replay, bound: float) -> float | None:
+    """Give the bound, lifted over the margin where only round-off separates them."""
+    if not isfinite(bound):
+        return None
+    turnover = abs(replayed.totals.sales) + abs(replayed.totals.purchases)
+    if replayed.margin > bound + ROUND_OFF * max(1.0, abs(replayed.margin), turnover):
+        raise PlanningFault(f"the margin {replayed.margin} lies above its bound {bound}", [])
+    return max(bound, replayed.margin)
+
+
+def _effort(choice: Choice, found: Found, limits: Limits) -> answer.Effort:
+    return answer.Effort(
+        method=choice.method,
+        why=choice.why,
+        threads=limits.threads,
+        solver_seconds=sum(solution.solver_seconds for solution in found.solutions),
+        build_seconds=sum(solution.build_seconds for solution in found.solutions),
+    )
+
+
+def _refused(job: OneWindow, findings: list[Finding]) -> Diagnosis:
+    return answer.diagnosis(
+        job, " ".join(finding.sentence for finding in findings), [finding.members for finding in findings]
+    )
+
+
+def _proven_infeasible(job: OneWindow, parts: list[Instance]) -> Diagnosis:
+    """Name what is asked of the assets that cannot meet it."""
+    conflicts = [_asked(job, part) for part in parts]
+    names = [", ".join(store.id for store in part.stores) for part in parts]
+    sentence = " ".join(
+        f"No schedule of {who} meets all that is asked of it within its limits: {'; '.join(text for _, text in asked)}."
+        for who, asked in zip(names, conflicts, strict=True)
+    )
+    return answer.diagnosis(job, sentence, conflicts)
+
+
+def _asked(job: OneWindow, part: Instance) -> list[tuple[str, str]]:
+    binding = {row.commitment: row for row in part.rows if row.shortfall_price_per_hour is None}
+    commitments = [
+        (
+            row.pointer,
+            f"commitment {job.commitments[number].id}: {row.due_hours:g} h at {row.threshold_mw:g} MW or more",
+        )
+        for number, row in sorted(binding.items())
+    ]
+    targets = [
+        (f"/targets/{store.id}/final_stored_mwh", f"{store.id} ends with at least {store.final_floor_mwh:g} MWh")
+        for store in part.stores
+        if store.final_floor_mwh > 0
+    ]
+    return commitments + targets
+
+
+def _undecided(job: OneWindow, found: Found, limits: Limits) -> Undecided:
+    """Hand over what is proven, and the attempt in hand: planned where a plan was found, idle elsewhere."""
+    decisions = {}
+    for part, solution in zip(found.choice.parts, found.solutions, strict=True):
+        for number, store in enumerate(part.stores):
+            power = (
+                [0.0] * part.intervals if solution.power_mw is None else set_points(store, solution.power_mw[number])
+            )
+            decisions[store.id] = Decision(power_mw=power)
+    bound = found.bound if isfinite(found.bound) else None
+    attempt = answer.schedule(job, replay(job, decisions), "violated", bound, _effort(found.choice, found, limits))
+    summary = f"{limits.seconds:g} s were not enough to find a schedule or to prove that there is none."
+    return answer.undecided(job, summary, bound, attempt)
+
+
+def _checked(job: CheckJob, limits: Limits) -> Schedule:
+    """Recompute a schedule that is already there."""
+    count = job.window.intervals if job.window is not None else 0
+    decisions = {}
+    for asset in job.schedule.assets:
+        power = asset.power_mw if isinstance(asset.power_mw, list) else [asset.power_mw] * count
+        decisions[asset.id] = Decision(power_mw=power, on=asset.on)
+    replayed = replay(job, decisions)
+    return answer.schedule(
+        job,
+        replayed,
+        "violated" if replayed.verification.violations else "feasible",
+        None,
+        answer.Effort(None, "a check solves nothing", limits.threads),
+    )

@@ -1,0 +1,94 @@
+"""At least so many hours with power at or above a threshold.
+
+    sign * (sum of (d - c)[a,t] - L[t])  >=  theta * y[t] - M[t] * (1 - y[t])          (1)
+    sum of h*y[t] over the row + shortfall  >=  hours due                              (2)
+    b[t] >= y[t] - y[t-1],  sum of b[k], k = t-B+1 .. t  <=  y[t]                      (3)
+
+y      1 where the interval is counted; theta  threshold plus headroom, MW; sign  +1 discharge, -1 charge
+L      what loads of a group, site or fleet draw; M  the most that can flow the other way, MW
+b      1 where a counted block begins; B  its least length, intervals; no block begins where B do not fit
+
+An excused interval counts whatever the power: (1) is dropped there. For a single store (1) is split into its two
+powers, d >= theta*y and c <= C*(1 - y), which is tighter. (3) is the turn-on inequality of Rajan and Takriti 2005.
+A priced row pays for its shortfall; a binding one has none.
+"""
+
+from itertools import pairwise
+
+import numpy as np
+
+from workers.planning.instance import HoursRow
+from workers.planning.model import INFINITE, Columns, Model
+from workers.planning.rules.columns import FleetColumns, StoreColumns
+from workers.planning.store import Booleans, Floats, whole_intervals
+
+
+def add(model: Model, columns: FleetColumns, row: HoursRow) -> None:
+    """Add one row of a commitment."""
+    hours = columns.instance.hours
+    where = np.array(row.intervals, dtype=np.int64)
+    excused = np.isin(where, list(row.excused))
+    counted = model.binaries(excused | _within_reach(columns, row)[where])
+    asked = np.flatnonzero(~excused)
+    if row.asset is not None and len(row.stores) == 1:
+        _one_store(model, columns.stores[row.stores[0]], row, counted[asked], where[asked])
+    elif row.stores:
+        _net_sum(model, columns, row, counted[asked], where[asked])
+    if row.min_block > 1:
+        _blocks(model, row, counted, where)
+    if row.shortfall_price_per_hour is None:
+        model.row(whole_intervals(row.due_hours, hours), INFINITE, (counted, 1.0))
+        return
+    shortfall = model.columns(1, 0.0, max(row.due_hours, 0.0))
+    model.earn(shortfall, -row.shortfall_price_per_hour)
+    model.row(row.due_hours, INFINITE, (counted, hours), (shortfall, 1.0))
+
+
+def _within_reach(columns: FleetColumns, row: HoursRow) -> Booleans:
+    """Find the intervals in which the members' limits allow the threshold at all."""
+    reachable: Booleans = most_power(columns, row) >= row.threshold_mw - 1e-6
+    return reachable
+
+
+def most_power(columns: FleetColumns, row: HoursRow) -> Floats:
+    """Give the most power in the row's direction that limits allow, MW per interval."""
+    most: Floats = -row.sign * row.load_mw
+    for number in row.stores:
+        store = columns.stores[number].store
+        if row.sign > 0:
+            most = most + store.discharge_limit_mw * store.can_discharge
+        else:
+            most = most + store.charge_limit_mw * store.can_charge
+    return most
+
+
+def _one_store(model: Model, store: StoreColumns, row: HoursRow, counted: Columns, where: Columns) -> None:
+    forward, backward = (store.discharge, store.charge) if row.sign > 0 else (store.charge, store.discharge)
+    other = store.store.charge_limit_mw if row.sign > 0 else store.store.discharge_limit_mw
+    model.rows(0.0, INFINITE, (forward[where], 1.0), (counted, -row.threshold_mw))
+    model.rows(-INFINITE, other[where], (backward[where], 1.0), (counted, other[where]))
+
+
+def _net_sum(model: Model, columns: FleetColumns, row: HoursRow, counted: Columns, where: Columns) -> None:
+    backward = row.sign * row.load_mw
+    for number in row.stores:
+        store = columns.stores[number].store
+        backward = backward + (store.charge_limit_mw if row.sign > 0 else store.discharge_limit_mw)
+    span = np.maximum(row.threshold_mw + backward[where], 0.0)
+    terms = [(part[where], row.sign * factor) for part, factor in columns.net(row.stores)]
+    lower = row.threshold_mw - span + row.sign * row.load_mw[where]
+    model.rows(lower, INFINITE, *terms, (counted, -span))
+
+
+def _blocks(model: Model, row: HoursRow, counted: Columns, where: Columns) -> None:
+    """Add (3) within each unbroken stretch of the row's intervals."""
+    borders = [0, *(k + 1 for k, (left, right) in enumerate(pairwise(where)) if right != left + 1), len(where)]
+    for first, end in pairwise(borders):
+        members = counted[first:end]
+        fits = np.arange(end - first) + row.min_block <= end - first
+        begins = model.columns(end - first, 0.0, fits.astype(float))
+        model.rows(0.0, INFINITE, (begins[:1], 1.0), (members[:1], -1.0))
+        model.rows(0.0, INFINITE, (begins[1:], 1.0), (members[1:], -1.0), (members[:-1], 1.0))
+        for t in range(end - first):
+            window = begins[max(0, t - row.min_block + 1) : t + 1]
+            model.row(-INFINITE, 0.0, (window, 1.0), (members[t : t + 1], -1.0))

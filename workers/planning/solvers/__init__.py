@@ -1,0 +1,1 @@
+"""Solvers behind one face: their words become ours by table."""
