@@ -10,9 +10,12 @@ from pydantic import TypeAdapter
 from schemas.assumptions import assumptions
 from schemas.cautions import CAUTIONS
 from schemas.diagnosis import Conflict, Diagnosis, Member
-from schemas.job import Job, OneWindow
+from schemas.job import CheckJob, Job, ScheduleJob
 from schemas.schedule import Outcome, Provenance, Schedule, Undecided
 from workers.planning.audit import Replay
+
+PlannedJob = ScheduleJob | CheckJob
+"""The tasks that are planned so far; all on one window."""
 
 LIBRARIES = ("hourwright", "highspy", "pyomo")
 
@@ -46,7 +49,7 @@ def provenance(job: Job, effort: Effort) -> Provenance:
     )
 
 
-def schedule(job: OneWindow, replayed: Replay, outcome: Outcome, bound: float | None, effort: Effort) -> Schedule:
+def schedule(job: PlannedJob, replayed: Replay, outcome: Outcome, bound: float | None, effort: Effort) -> Schedule:
     """Dress a replay as a schedule; `bound` is the proven upper bound of its margin, None where nothing is proven."""
     if job.window is None:
         raise ValueError("the job must carry its window inline")
@@ -81,7 +84,7 @@ def relative_gap(replayed: Replay, bound: float) -> float:
     return max(0.0, bound - replayed.margin) / max(abs(replayed.margin), 0.01 * turnover, 1.0)
 
 
-def diagnosis(job: OneWindow, summary: str, conflicts: Iterable[Iterable[tuple[str, str]]]) -> Diagnosis:
+def diagnosis(job: PlannedJob, summary: str, conflicts: Iterable[Iterable[tuple[str, str]]]) -> Diagnosis:
     """Say that a job cannot be met, and by what; conflicts are pointers with words, not yet cut to the irreducible."""
     return Diagnosis(
         complete=False,
@@ -95,7 +98,7 @@ def diagnosis(job: OneWindow, summary: str, conflicts: Iterable[Iterable[tuple[s
     )
 
 
-def undecided(job: OneWindow, summary: str, bound: float | None, attempt: Schedule | None) -> Undecided:
+def undecided(job: PlannedJob, summary: str, bound: float | None, attempt: Schedule | None) -> Undecided:
     """Say that time ran out with neither a schedule nor a proof; the attempt does not meet the request."""
     return Undecided(
         summary=summary,

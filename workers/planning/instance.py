@@ -261,7 +261,7 @@ def _rows(
             raise ValueError(f"commitment {commitment.id} is of a kind that is not planned")
         whom = commitment.applies_to
         if whom.assets is not None:
-            bound = [(asset, [asset]) for asset in whom.assets]
+            bound: list[tuple[str | None, list[str]]] = [(asset, [asset]) for asset in whom.assets]
         else:
             of_site = at_site.get(whom.site, []) if whom.site is not None else everything
             bound = [(None, list(whom.group) if whom.group is not None else of_site)]
@@ -269,17 +269,17 @@ def _rows(
         excused = frozenset(
             k for stretch in commitment.excused for k in calendar.starting_within(stretch.from_, stretch.to)
         )
-        for asset, members in bound:
+        for whose, members in bound:
             own = tuple(numbers[member] for member in members if member in numbers)
-            if asset is None:
+            if whose is None:
                 load = _load(members, stores, numbers, loads, calendar.count)
             else:
-                load = loads.get(asset, np.zeros(calendar.count))
+                load = loads.get(whose, np.zeros(calendar.count))
             for order, stretch in enumerate(stretches):
                 yield HoursRow(
                     commitment=number,
                     id=commitment.id,
-                    asset=asset,
+                    asset=whose,
                     day=stretch.day.isoformat() if stretch.day else None,
                     stores=own,
                     load_mw=load,
@@ -287,7 +287,7 @@ def _rows(
                     threshold_mw=_threshold(commitment, [stores[k] for k in own]) + commitment.headroom_mw,
                     intervals=stretch.intervals,
                     excused=excused.intersection(stretch.intervals),
-                    due_hours=commitment.hours - (_credit(job, commitment, asset) if order == 0 else 0.0),
+                    due_hours=commitment.hours - (_credit(job, commitment, whose) if order == 0 else 0.0),
                     min_block=max(1, round(commitment.min_block_hours / calendar.hours)),
                     shortfall_price_per_hour=commitment.shortfall_price_per_hour,
                 )

@@ -1,9 +1,10 @@
 """One model for stores that something couples: assemble the rules, solve, and never mix modes.
 
-The energy balance with both modes at once is a relaxation of a store. It is solved first, with the binaries of
-`rules.exclusive_modes` only where mixing could pay. Where the answer mixes all the same, a linear polish with every
-discrete choice and those modes fixed usually repairs it within the gap; if not, the binaries go in there and the model is
-solved again. The bound is that of a relaxation, hence true; an infeasible relaxation proves the request infeasible.
+A store that may charge and discharge at once is a relaxation of a store. It is solved first, with the binaries of
+`rules.exclusive_modes` only where mixing could pay, and among several stores with those as fractions at first. Where
+the answer mixes, a linear polish with every discrete choice and the modes fixed makes a schedule of it, often within
+the gap; if not, the binaries go in and the model is solved again from there. A relaxation's bound is true, and an
+infeasible one proves the request infeasible.
 """
 
 from dataclasses import dataclass, field, replace
@@ -12,7 +13,7 @@ from time import perf_counter
 import numpy as np
 
 from workers.planning.instance import Instance
-from workers.planning.limits import Limits
+from workers.planning.limits import AUDIT_SHARE, Limits, Unwatched, Watch
 from workers.planning.model import Model
 from workers.planning.rules import (
     connection_limits,
@@ -28,6 +29,7 @@ from workers.planning.rules import (
     wear,
 )
 from workers.planning.rules.columns import FleetColumns, store_columns
+from workers.planning.rules.exclusive_modes import Modes
 from workers.planning.solvers import highs
 from workers.planning.solvers.ending import Ending, Stopped
 from workers.planning.store import Booleans, Floats
@@ -58,7 +60,15 @@ class Assembled:
     """A model with its columns, ready for a solver."""
 
     columns: FleetColumns
+    modes: tuple[Modes, ...]
     matrix: highs.Matrix
+
+    def with_modes_as_fractions(self) -> "Assembled":
+        """Let the mode columns take any value between 0 and 1."""
+        integer = self.matrix.integer.copy()
+        for modes in self.modes:
+            integer[modes.columns] = False
+        return replace(self, matrix=replace(self.matrix, integer=integer))
 
 
 @dataclass
@@ -69,6 +79,7 @@ class _Search:
     apart: list[Booleans]
     seed: int
     limits: Limits
+    watch: Watch
     ends: float
     best: Ending | None = None
     powers: tuple[Floats, ...] | None = None
@@ -84,15 +95,31 @@ class _Search:
         self.build_seconds += perf_counter() - began
         return assembled
 
-    def solve(self, matrix: highs.Matrix) -> Ending:
+    def solve(self, assembled: Assembled, start: Floats | None = None) -> Ending:
+        """Solve, and take over what is proven; `start` is a feasible point to begin from."""
+        ending = self._run(assembled.matrix, self.ends - self.limits.clock(), self.watch, start)
+        self.last = ending.stopped
+        self.bound = min(self.bound, ending.bound)
+        return ending
+
+    def keep_unmixed(self, assembled: Assembled, ending: Ending, mixed: list[Booleans]) -> Ending:
+        """Make a schedule of what mixes modes; also after time or patience ran out, in the share left for the audit."""
+        if ending.values is None:
+            return ending
+        left = max(self.ends - self.limits.clock(), self.limits.seconds * AUDIT_SHARE / 2)
+        polished = self._run(_unmixed(assembled, ending.values, mixed), left, Unwatched(), None)
+        self.keep(assembled, polished)
+        return polished
+
+    def _run(self, matrix: highs.Matrix, seconds: float, watch: Watch, start: Floats | None) -> Ending:
         instance = self.instance
         effort = highs.Effort(
             relative_gap=instance.relative_gap,
             absolute_gap=max(instance.absolute_gap, instance.relative_gap * MONEY_UNIT),
-            seconds=self.ends - self.limits.clock(),
+            seconds=seconds,
             seed=self.seed,
         )
-        ending = highs.solve(matrix, effort)
+        ending = highs.solve(matrix, effort, watch, start)
         self.solver_seconds += ending.seconds
         return ending
 
@@ -123,35 +150,49 @@ class _Search:
 
 
 def solve_jointly(
-    instance: Instance, limits: Limits, *, seed: int, seconds: float, everywhere: bool = False
+    instance: Instance, limits: Limits, watch: Watch, *, seed: int, seconds: float, everywhere: bool = False
 ) -> Solution:
     """Plan all stores of an instance in one model; `everywhere` puts in every binary from the start."""
     apart = [where | np.bool_(everywhere) for where in _where_mixing_may_pay(instance)]
-    search = _Search(instance, apart, seed, limits, limits.clock() + seconds)
+    search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds)
+    assembled = search.assemble()
+    start = None
+    if len(instance.stores) > 1 and any(len(modes.columns) for modes in assembled.modes):
+        start = _first_schedule(search, assembled)
+        if search.is_proven() or search.last is not Stopped.WITHIN_GAP:
+            return search.solution()
     while True:
         search.rounds += 1
-        assembled = search.assemble()
-        ending = search.solve(assembled.matrix)
-        search.last = ending.stopped
-        search.bound = min(search.bound, ending.bound)
+        ending = search.solve(assembled, start)
         if ending.values is None:
             return search.solution()
         mixed = _mixed(assembled.columns, ending.values)
         if not any(where.any() for where in mixed):
             search.keep(assembled, ending)
             return search.solution()
-        search.keep(assembled, search.solve(_unmixed(assembled, ending.values, mixed)))
-        if search.is_proven() or not search.keep_apart(mixed):
+        search.keep_unmixed(assembled, ending, mixed)
+        if search.is_proven() or ending.stopped is not Stopped.WITHIN_GAP or not search.keep_apart(mixed):
             return search.solution()
+        assembled, start = search.assemble(), None
+
+
+def _first_schedule(search: _Search, assembled: Assembled) -> Floats | None:
+    """Solve with the modes as fractions: a bound, and usually a schedule to start from, in a fraction of the time."""
+    loose = assembled.with_modes_as_fractions()
+    ending = search.solve(loose)
+    if ending.values is None:
+        return None
+    return search.keep_unmixed(loose, ending, _mixed(assembled.columns, ending.values)).values
 
 
 def assemble(instance: Instance, apart: list[Booleans]) -> Assembled:
     """Write every rule of an instance into one model; `apart` says per store where modes are exclusive by a binary."""
     model, hours = Model(), instance.hours
     columns = FleetColumns(instance, tuple(store_columns(model, store) for store in instance.stores))
+    modes = []
     for store, where in zip(columns.stores, apart, strict=True):
         stored_energy.add(model, store, hours)
-        exclusive_modes.add(model, store, where)
+        modes.append(exclusive_modes.add(model, store, where))
         minimum_power.add(model, store)
         runs.add(model, store)
         ramps.add(model, store)
@@ -163,7 +204,7 @@ def assemble(instance: Instance, apart: list[Booleans]) -> Assembled:
     settlement.add(model, columns)
     for row in instance.rows:
         hours_at_least.add(model, columns, row)
-    return Assembled(columns, highs.matrix_of(model.as_pyomo()))
+    return Assembled(columns, tuple(modes), highs.matrix_of(model.as_pyomo()))
 
 
 def is_within_gap(instance: Instance, margin: float, bound: float) -> bool:
@@ -190,15 +231,16 @@ def _mixed(columns: FleetColumns, values: Floats) -> list[Booleans]:
 
 
 def _unmixed(assembled: Assembled, values: Floats, mixed: list[Booleans]) -> highs.Matrix:
-    """Fix every discrete choice, and every mixed interval to the direction in which its stored energy moves."""
+    """Fix every discrete choice, and every mode to the direction in which its stored energy moves."""
     matrix = highs.fixed(assembled.matrix, values)
-    upper = matrix.upper.copy()
-    for store, where in zip(assembled.columns.stores, mixed, strict=True):
+    lower, upper = matrix.lower.copy(), matrix.upper.copy()
+    for store, modes, where in zip(assembled.columns.stores, assembled.modes, mixed, strict=True):
         charge, discharge = values[store.charge], values[store.discharge]
         fills = charge * store.store.charge_efficiency > discharge / store.store.discharge_efficiency
         upper[store.discharge[where & fills]] = 0.0
         upper[store.charge[where & ~fills]] = 0.0
-    return replace(matrix, upper=upper)
+        lower[modes.columns] = upper[modes.columns] = (~fills[modes.intervals]).astype(float)
+    return replace(matrix, lower=lower, upper=upper)
 
 
 def _net_powers(columns: FleetColumns, values: Floats) -> tuple[Floats, ...]:

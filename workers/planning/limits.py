@@ -1,8 +1,10 @@
 """What a plan may take, and who watches it."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from contextlib import AbstractContextManager, contextmanager, nullcontext
 from dataclasses import dataclass
 from datetime import datetime
+from threading import Lock
 from time import monotonic
 from typing import Protocol
 
@@ -48,6 +50,9 @@ class Watch(Protocol):
     def is_stop_asked(self) -> bool:
         """Tell whether the plan should end with what is in hand."""
 
+    def solving(self, cancel: Callable[[], None]) -> AbstractContextManager[None]:
+        """Hold a way to cancel a solve for as long as it runs; `cancel` may be called from another thread."""
+
 
 class Unwatched:
     """Nobody watches."""
@@ -58,3 +63,41 @@ class Unwatched:
     def is_stop_asked(self) -> bool:
         """Never ask to stop."""
         return False
+
+    def solving(self, cancel: Callable[[], None]) -> AbstractContextManager[None]:  # noqa: ARG002
+        """Let it run."""
+        return nullcontext()
+
+
+class StoppableWatch(Unwatched):
+    """Lets another thread stop a plan: running solves are cancelled, new ones are not begun."""
+
+    def __init__(self) -> None:
+        self._lock = Lock()
+        self._running: dict[int, Callable[[], None]] = {}
+        self._stopped = False
+
+    def ask_stop(self) -> None:
+        """Ask the plan to end with what is in hand."""
+        with self._lock:
+            self._stopped = True
+            for cancel in self._running.values():
+                cancel()
+
+    def is_stop_asked(self) -> bool:
+        """Tell whether `ask_stop` was called."""
+        return self._stopped
+
+    @contextmanager
+    def solving(self, cancel: Callable[[], None]) -> Iterator[None]:
+        """Hold `cancel` while a solve runs; one that begins after the stop is cancelled at once."""
+        ticket = id(cancel)
+        with self._lock:
+            self._running[ticket] = cancel
+            if self._stopped:
+                cancel()
+        try:
+            yield
+        finally:
+            with self._lock:
+                del self._running[ticket]

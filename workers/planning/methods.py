@@ -82,7 +82,9 @@ def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: b
         waiting = len(choice.parts) - len(solutions)
         share = limits.left_to_solve() * limits.threads / waiting
         seconds = min(limits.left_to_solve(), LONGEST_SHARE * share)
-        solutions[number] = solve_jointly(choice.parts[number], limits, seed=seed, seconds=seconds, everywhere=careful)
+        solutions[number] = solve_jointly(
+            choice.parts[number], limits, watch, seed=seed, seconds=seconds, everywhere=careful
+        )
         watch.progress("solving", len(solutions) / len(choice.parts))
 
     if limits.threads == 1 or len(choice.parts) == 1:
@@ -134,7 +136,7 @@ def _second_look(found: Found, limits: Limits, watch: Watch, seed: int, gap: flo
         if left <= 0 or watch.is_stop_asked():
             break
         part = replace(found.choice.parts[number], relative_gap=gap, absolute_gap=0.0)
-        again = solve_jointly(part, limits, seed=seed, seconds=left)
+        again = solve_jointly(part, limits, watch, seed=seed, seconds=left)
         solutions[number] = _better(solutions[number], again)
         total = sum(solution.margin or 0.0 for solution in solutions)
         if is_within_gap(found.choice.parts[0], total, sum(solution.bound for solution in solutions)):

@@ -15,7 +15,7 @@ from scipy.sparse import csr_matrix
 
 Columns = NDArray[np.int64]
 Floats = NDArray[np.float64]
-Term = tuple[Columns, ArrayLike]
+Term = tuple[Columns, float | Floats]
 
 INFINITE = float("inf")
 

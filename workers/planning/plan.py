@@ -4,7 +4,7 @@ from math import isfinite
 
 from schemas.coupling import couplings
 from schemas.diagnosis import Diagnosis
-from schemas.job import CheckJob, Job, OneWindow
+from schemas.job import CheckJob, Job, ScheduleJob
 from schemas.problems import InvalidRequest
 from schemas.schedule import Schedule, Undecided, Violation
 from schemas.support import require_supported
@@ -19,10 +19,10 @@ from workers.planning.screening import Finding, screen
 Answer = Schedule | Diagnosis | Undecided
 
 ROUND_OFF = 1e-6
-"""A margin may pass its bound by this share through round-off and the audit's tolerance; by more, a fault is ours."""
+"""Margins may differ by this share through round-off and the audit's tolerance; by more, a fault is ours."""
 
 
-class PlanningFault(Exception):
+class PlanningError(Exception):
     """Our own fault: a schedule that the audit refuses, or a margin above its bound; carries the evidence."""
 
     def __init__(self, what: str, violations: list[Violation]) -> None:
@@ -34,14 +34,14 @@ class PlanningFault(Exception):
 def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
     """Plan a validated job whose documents are inline.
 
-    Raises Unsupported for what cannot be planned yet, InvalidRequest for `per_asset` on coupled assets, PlanningFault
+    Raises Unsupported for what cannot be planned yet, InvalidRequest for `per_asset` on coupled assets, PlanningError
     where no answer can be trusted. Infeasible and out of time are answers.
     """
     require_supported(job)
-    if not isinstance(job, OneWindow):
-        raise ValueError("a job on one window is expected")
     if isinstance(job, CheckJob):
         return _checked(job, limits)
+    if not isinstance(job, ScheduleJob):
+        raise ValueError(f"the task {job.task} passed as supported, but nothing here does it")
     if job.method == "per_asset" and (faults := couplings(job)):
         raise InvalidRequest(faults)
     watch = watch or Unwatched()
@@ -59,7 +59,7 @@ def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
     return _audited(job, choice, found, limits, watch)
 
 
-def _audited(job: OneWindow, choice: Choice, found: Found, limits: Limits, watch: Watch) -> Schedule:
+def _audited(job: ScheduleJob, choice: Choice, found: Found, limits: Limits, watch: Watch) -> Schedule:
     """Let the audit judge; what it refuses is solved once more with every mode apart, and never returned."""
     replayed = replay(job, _decisions(found))
     if replayed.verification.violations:
@@ -67,7 +67,8 @@ def _audited(job: OneWindow, choice: Choice, found: Found, limits: Limits, watch
         found = again if again.has_schedule else found
         replayed = replay(job, _decisions(found))
     if replayed.verification.violations:
-        raise PlanningFault("the audit refuses every schedule found", replayed.verification.violations)
+        raise PlanningError("the audit refuses every schedule found", replayed.verification.violations)
+    _require_margin(replayed, found)
     bound = _bound_above(replayed, found.bound)
     gap = None if bound is None else bound - replayed.margin
     is_optimal = gap is not None and (
@@ -86,13 +87,28 @@ def _decisions(found: Found) -> dict[str, Decision]:
     return decisions
 
 
+def _slack(replayed: Replay) -> float:
+    """Give how far round-off and the audit's tolerance may move a margin, in money."""
+    turnover = abs(replayed.totals.sales) + abs(replayed.totals.purchases)
+    return ROUND_OFF * max(1.0, abs(replayed.margin), turnover)
+
+
+def _require_margin(replayed: Replay, found: Found) -> None:
+    """Refuse a schedule that earns less than the model said: the model's money is wrong, and so is its bound.
+
+    More than that is possible: within its gap a model may pay for a shortfall or a peak that is not there.
+    """
+    claimed = sum(solution.margin or 0.0 for solution in found.solutions)
+    if replayed.margin < claimed - _slack(replayed):
+        raise PlanningError(f"the schedule earns {replayed.margin}, the model said {claimed}", [])
+
+
 def _bound_above(replayed: Replay, bound: float) -> float | None:
     """Give the bound, lifted over the margin where only round-off separates them."""
     if not isfinite(bound):
         return None
-    turnover = abs(replayed.totals.sales) + abs(replayed.totals.purchases)
-    if replayed.margin > bound + ROUND_OFF * max(1.0, abs(replayed.margin), turnover):
-        raise PlanningFault(f"the margin {replayed.margin} lies above its bound {bound}", [])
+    if replayed.margin > bound + _slack(replayed):
+        raise PlanningError(f"the margin {replayed.margin} lies above its bound {bound}", [])
     return max(bound, replayed.margin)
 
 
@@ -106,13 +122,13 @@ def _effort(choice: Choice, found: Found, limits: Limits) -> answer.Effort:
     )
 
 
-def _refused(job: OneWindow, findings: list[Finding]) -> Diagnosis:
+def _refused(job: ScheduleJob, findings: list[Finding]) -> Diagnosis:
     return answer.diagnosis(
         job, " ".join(finding.sentence for finding in findings), [finding.members for finding in findings]
     )
 
 
-def _proven_infeasible(job: OneWindow, parts: list[Instance]) -> Diagnosis:
+def _proven_infeasible(job: ScheduleJob, parts: list[Instance]) -> Diagnosis:
     """Name what is asked of the assets that cannot meet it."""
     conflicts = [_asked(job, part) for part in parts]
     names = [", ".join(store.id for store in part.stores) for part in parts]
@@ -123,7 +139,7 @@ def _proven_infeasible(job: OneWindow, parts: list[Instance]) -> Diagnosis:
     return answer.diagnosis(job, sentence, conflicts)
 
 
-def _asked(job: OneWindow, part: Instance) -> list[tuple[str, str]]:
+def _asked(job: ScheduleJob, part: Instance) -> list[tuple[str, str]]:
     binding = {row.commitment: row for row in part.rows if row.shortfall_price_per_hour is None}
     commitments = [
         (
@@ -140,7 +156,7 @@ def _asked(job: OneWindow, part: Instance) -> list[tuple[str, str]]:
     return commitments + targets
 
 
-def _undecided(job: OneWindow, found: Found, limits: Limits) -> Undecided:
+def _undecided(job: ScheduleJob, found: Found, limits: Limits) -> Undecided:
     """Hand over what is proven, and the attempt in hand: planned where a plan was found, idle elsewhere."""
     decisions = {}
     for part, solution in zip(found.choice.parts, found.solutions, strict=True):

@@ -1,7 +1,8 @@
 """What arithmetic can refuse before any solver starts.
 
-Each finding is a proof: it uses only what no schedule can escape - how much energy can be in a store, how much power can
-flow, how many intervals there are. The sentences are those of the diagnosis: what is needed, what can be had, by when.
+Each finding is a proof: it uses only what no schedule can escape - how much energy can be in a store, how much power
+can flow, how many intervals there are. The sentences are those of the diagnosis: what is needed, what can be had, by
+when.
 """
 
 from collections.abc import Iterator
@@ -79,11 +80,11 @@ def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
         )
 
 
-def _words(instance: Instance, row: HoursRow) -> str:
+def _words(row: HoursRow) -> str:
     whom = f" of {row.asset}" if row.asset else ""
     day = f" on {row.day}" if row.day else ""
     verb = "discharge" if row.sign > 0 else "charge"
-    return f"commitment {row.id}{whom}{day}: {row.due_hours:g} h of {verb} at {row.threshold_mw:g} MW or more"
+    return f"Commitment {row.id}{whom}{day}: {row.due_hours:g} h of {verb} at {row.threshold_mw:g} MW or more"
 
 
 def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
@@ -91,7 +92,7 @@ def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
     due = whole_intervals(row.due_hours, instance.hours)
     if due <= 0:
         return
-    member = (row.pointer, _words(instance, row))
+    member = (row.pointer, _words(row))
     power = _most_power(instance, row)
     able = [t for t in row.intervals if t in row.excused or power[t] >= row.threshold_mw - SLACK_MW]
     counted = _in_blocks(able, row.min_block)
@@ -99,8 +100,8 @@ def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
         unit = f" in unbroken stretches of {row.min_block * instance.hours:g} h" if row.min_block > 1 else ""
         yield Finding(
             (member,),
-            f"{_words(instance, row)[0].upper()}{_words(instance, row)[1:]} cannot fit: limits and outages allow it for "
-            f"at most {len(counted) * instance.hours:g} h{unit} of the time that counts.",
+            f"{_words(row)} cannot fit: limits and outages allow it for at most "
+            f"{len(counted) * instance.hours:g} h{unit} of the time that counts.",
         )
         return
     if row.asset is not None and len(row.stores) == 1 and row.sign > 0:

@@ -3,23 +3,30 @@
 from dataclasses import dataclass
 
 from workers.planning.instance import Instance
-from workers.planning.model import Columns, Model, Term
+from workers.planning.model import Columns, Model
 from workers.planning.store import Store
+
+
+@dataclass(frozen=True)
+class States:
+    """Yes-or-no columns, T each: whether a store discharges, whether it charges; it idles where neither."""
+
+    discharging: Columns
+    charging: Columns
 
 
 @dataclass(frozen=True)
 class StoreColumns:
     """Columns of one store, T each: powers at the terminals in MW (both >= 0), energy at interval ends in MWh.
 
-    `discharging` and `charging` are yes-or-no columns, present only where being on matters.
+    `states` are there only where being on matters.
     """
 
     store: Store
     charge: Columns
     discharge: Columns
     stored: Columns
-    discharging: Columns | None = None
-    charging: Columns | None = None
+    states: States | None = None
 
 
 @dataclass(frozen=True)
@@ -29,9 +36,9 @@ class FleetColumns:
     instance: Instance
     stores: tuple[StoreColumns, ...]
 
-    def net(self, stores: tuple[int, ...]) -> list[Term]:
+    def net(self, stores: tuple[int, ...]) -> list[tuple[Columns, float]]:
         """Give the terms whose sum is the net power of these stores, MW per interval, positive into the grid."""
-        terms: list[Term] = []
+        terms: list[tuple[Columns, float]] = []
         for number in stores:
             terms += [(self.stores[number].discharge, 1.0), (self.stores[number].charge, -1.0)]
         return terms
@@ -48,5 +55,5 @@ def store_columns(model: Model, store: Store) -> StoreColumns:
     stored = model.columns(count, store.floor_mwh, store.ceiling_mwh)
     if not store.has_states:
         return StoreColumns(store, charge, discharge, stored)
-    discharging, charging = model.binaries(store.can_discharge), model.binaries(store.can_charge)
-    return StoreColumns(store, charge, discharge, stored, discharging, charging)
+    states = States(model.binaries(store.can_discharge), model.binaries(store.can_charge))
+    return StoreColumns(store, charge, discharge, stored, states)

@@ -16,12 +16,12 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns) -> None:
     """Tie the on-off columns of a store to its powers; nothing for a store without them."""
-    store = columns.store
-    if columns.discharging is None or columns.charging is None:
+    store, states = columns.store, columns.states
+    if states is None:
         return
-    _tie(model, columns.discharge, columns.discharging, store.min_discharge_mw, store.discharge_limit_mw)
-    _tie(model, columns.charge, columns.charging, store.min_charge_mw, store.charge_limit_mw)
-    model.rows(-INFINITE, 1.0, (columns.discharging, 1.0), (columns.charging, 1.0))
+    _tie(model, columns.discharge, states.discharging, store.min_discharge_mw, store.discharge_limit_mw)
+    _tie(model, columns.charge, states.charging, store.min_charge_mw, store.charge_limit_mw)
+    model.rows(-INFINITE, 1.0, (states.discharging, 1.0), (states.charging, 1.0))
 
 
 def _tie(model: Model, power: Columns, is_on: Columns, lowest: float, highest: NDArray[np.float64]) -> None:

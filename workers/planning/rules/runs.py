@@ -20,23 +20,22 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workers.planning.model import INFINITE, Columns, Model
-from workers.planning.rules.columns import StoreColumns
+from workers.planning.rules.columns import States, StoreColumns
+from workers.planning.store import Store
 
 
 def add(model: Model, columns: StoreColumns) -> None:
     """Add runs, rests and starts of one store; nothing for a store without on-off columns."""
-    store = columns.store
-    if columns.discharging is None or columns.charging is None:
+    store, states = columns.store, columns.states
+    if states is None or (store.min_run <= 1 and store.min_rest == 0 and not store.start_allowances):
         return
-    if store.min_run <= 1 and store.min_rest == 0 and not store.start_allowances:
-        return
-    begins_d = _starts(model, columns.discharging, store.can_discharge, was_on=store.direction_before > 0)
-    begins_c = _starts(model, columns.charging, store.can_charge, was_on=store.direction_before < 0)
-    _least_run(model, columns.discharging, begins_d, store.can_discharge, store.min_run)
-    _least_run(model, columns.charging, begins_c, store.can_charge, store.min_run)
+    begins_d = _starts(model, states.discharging, store.can_discharge, was_on=store.direction_before > 0)
+    begins_c = _starts(model, states.charging, store.can_charge, was_on=store.direction_before < 0)
+    _least_run(model, states.discharging, begins_d, store.can_discharge, store.min_run)
+    _least_run(model, states.charging, begins_c, store.can_charge, store.min_run)
     if store.min_rest > 0:
-        _least_rest(model, columns, begins_d, begins_c, store.min_rest)
-    _hold_state_before(model, columns)
+        _least_rest(model, store, states, begins_d, begins_c)
+    _hold_state_before(model, store, states)
     for allowance in store.start_allowances:
         day = np.array(allowance.intervals)
         model.row(-INFINITE, allowance.amount, (begins_d[day], 1.0), (begins_c[day], 1.0))
@@ -66,48 +65,34 @@ def _least_run(model: Model, is_on: Columns, begins: Columns, possible: NDArray[
         model.row(-INFINITE, 0.0, (begins[first : t + 1], 1.0), (is_on[t : t + 1], -1.0))
 
 
-def _least_rest(model: Model, columns: StoreColumns, begins_d: Columns, begins_c: Columns, least: int) -> None:
-    discharging, charging = columns.discharging, columns.charging
-    assert discharging is not None and charging is not None
-    for t in range(len(discharging) - 1):
-        later = slice(t + 1, t + 1 + least)
-        now = slice(t, t + 1)
+def _least_rest(model: Model, store: Store, states: States, begins_d: Columns, begins_c: Columns) -> None:
+    for t in range(len(begins_d) - 1):
+        later, now = slice(t + 1, t + 1 + store.min_rest), slice(t, t + 1)
         model.row(
             -INFINITE,
             1.0,
             (begins_d[later], 1.0),
             (begins_c[later], 1.0),
-            (discharging[now], 1.0),
-            (charging[now], 1.0),
+            (states.discharging[now], 1.0),
+            (states.charging[now], 1.0),
         )
-    if columns.store.direction_before != 0:
-        _rest_after_run_before(model, columns, begins_d, begins_c, least)
+    if store.direction_before != 0:
+        # (3) for the interval before the window, in which the store ran: no start while it would have to rest
+        model.rows(0.0, 0.0, (begins_d[: store.min_rest], 1.0))
+        model.rows(0.0, 0.0, (begins_c[: store.min_rest], 1.0))
 
 
-def _rest_after_run_before(
-    model: Model, columns: StoreColumns, begins_d: Columns, begins_c: Columns, least: int
-) -> None:
-    """A run that was under way until the window's start is followed by a rest too: no start in its first intervals."""
-    first = slice(0, min(least, len(begins_d)))
-    model.rows(0.0, 0.0, (begins_d[first], 1.0))
-    model.rows(0.0, 0.0, (begins_c[first], 1.0))
-
-
-def _hold_state_before(model: Model, columns: StoreColumns) -> None:
+def _hold_state_before(model: Model, store: Store, states: States) -> None:
     """Let a run or rest that began before the window last: (2) and (3) for starts that lie before it."""
-    store = columns.store
-    discharging, charging = columns.discharging, columns.charging
-    assert discharging is not None and charging is not None
-    held = min(store.held_intervals, len(discharging))
+    held = min(store.held_intervals, len(states.discharging))
     if held == 0:
         return
     if store.direction_before == 0:
-        model.rows(0.0, 0.0, (discharging[:held], 1.0))
-        model.rows(0.0, 0.0, (charging[:held], 1.0))
+        model.rows(0.0, 0.0, (states.discharging[:held], 1.0))
+        model.rows(0.0, 0.0, (states.charging[:held], 1.0))
         return
-    running, possible = (
-        (discharging, store.can_discharge) if store.direction_before > 0 else (charging, store.can_charge)
-    )
+    forward = store.direction_before > 0
+    running, possible = (states.discharging, store.can_discharge) if forward else (states.charging, store.can_charge)
     tripped = np.flatnonzero(~possible[:held])
     until = int(tripped[0]) if len(tripped) else held
     if until > 0:

@@ -30,7 +30,7 @@ class Ending:
     seconds: float
 
 
-class SolverFault(Exception):
+class SolverError(Exception):
     """A solver answered with a word that has no meaning here, or refused the model."""
 
     def __init__(self, solver: str, word: str) -> None:

@@ -13,36 +13,37 @@ from highspy import HighsModelStatus as Status
 from numpy.typing import NDArray
 from scipy.sparse import csr_matrix
 
-from workers.planning.solvers.ending import Ending, SolverFault, Stopped
+from workers.planning.limits import Watch
+from workers.planning.solvers.ending import Ending, SolverError, Stopped
 
 INFINITE = float("inf")
 
 FEASIBILITY = 1e-9
 """Tolerance of rows, bounds and integrality: tighter than the audit's, which recomputes stored energy by summing up."""
 
-MEANING: dict[Status, Stopped | None] = {
-    Status.kOptimal: Stopped.WITHIN_GAP,
-    Status.kInfeasible: Stopped.INFEASIBLE,
-    Status.kTimeLimit: Stopped.OUT_OF_TIME,
-    Status.kInterrupt: Stopped.INTERRUPTED,
-    Status.kUnboundedOrInfeasible: None,
-    Status.kHighsInterrupt: Stopped.INTERRUPTED,
-    Status.kModelEmpty: Stopped.WITHIN_GAP,
-    Status.kNotset: None,
-    Status.kLoadError: None,
-    Status.kModelError: None,
-    Status.kPresolveError: None,
-    Status.kSolveError: None,
-    Status.kPostsolveError: None,
-    Status.kUnbounded: None,
-    Status.kObjectiveBound: None,
-    Status.kObjectiveTarget: None,
-    Status.kIterationLimit: None,
-    Status.kSolutionLimit: None,
-    Status.kMemoryLimit: None,
-    Status.kUnknown: None,
+MEANING: dict[str, Stopped | None] = {
+    "kOptimal": Stopped.WITHIN_GAP,
+    "kInfeasible": Stopped.INFEASIBLE,
+    "kTimeLimit": Stopped.OUT_OF_TIME,
+    "kInterrupt": Stopped.INTERRUPTED,
+    "kUnboundedOrInfeasible": None,
+    "kHighsInterrupt": Stopped.INTERRUPTED,
+    "kModelEmpty": Stopped.WITHIN_GAP,
+    "kNotset": None,
+    "kLoadError": None,
+    "kModelError": None,
+    "kPresolveError": None,
+    "kSolveError": None,
+    "kPostsolveError": None,
+    "kUnbounded": None,
+    "kObjectiveBound": None,
+    "kObjectiveTarget": None,
+    "kIterationLimit": None,
+    "kSolutionLimit": None,
+    "kMemoryLimit": None,
+    "kUnknown": None,
 }
-"""Every status of HiGHS; None is a fault here: no such limit is set, and every column that earns is bounded."""
+"""Every status of HiGHS by its name; None is a fault here: no such limit is set, and what earns is bounded."""
 
 
 @dataclass(frozen=True)
@@ -91,22 +92,31 @@ def matrix_of(block: Any) -> Matrix:
     )
 
 
-def solve(matrix: Matrix, effort: Effort) -> Ending:
-    """Maximise; raise SolverFault on any word of HiGHS that is neither an answer nor a limit we set."""
+def solve(matrix: Matrix, effort: Effort, watch: Watch, start: NDArray[np.float64] | None = None) -> Ending:
+    """Maximise, from a feasible point where one is in hand.
+
+    Raises SolverError on any word of HiGHS that is neither an answer nor a limit we set.
+    """
     if (matrix.lower > matrix.upper).any():
         return Ending(Stopped.INFEASIBLE, None, None, -INFINITE, 0.0)
     if len(matrix.money) == 0:
         return Ending(Stopped.WITHIN_GAP, np.zeros(0), matrix.constant, matrix.constant, 0.0)
     began = perf_counter()
     solver = _solver(matrix, effort)
-    _run(solver)
-    if solver.getModelStatus() == Status.kUnboundedOrInfeasible:
-        solver.setOptionValue("presolve", "off")
+    if start is not None:
+        point = highspy.HighsSolution()
+        point.col_value = start
+        solver.setSolution(point)
+    solver.HandleUserInterrupt = True
+    with watch.solving(solver.cancelSolve):
         _run(solver)
+        if solver.getModelStatus() == Status.kUnboundedOrInfeasible:
+            solver.setOptionValue("presolve", "off")
+            _run(solver)
     status = solver.getModelStatus()
-    stopped = MEANING.get(status)
+    stopped = MEANING.get(status.name)
     if stopped is None:
-        raise SolverFault("HiGHS", str(status))
+        raise SolverError("HiGHS", status.name)
     return _ending(solver, matrix, stopped, perf_counter() - began)
 
 
@@ -141,9 +151,9 @@ def _solver(matrix: Matrix, effort: Effort) -> highspy.Highs:
     }
     for name, value in options.items():
         if solver.setOptionValue(name, value) != highspy.HighsStatus.kOk:
-            raise SolverFault("HiGHS", f"option {name} refused")
+            raise SolverError("HiGHS", f"option {name} refused")
     if solver.passModel(_program(matrix)) == highspy.HighsStatus.kError:
-        raise SolverFault("HiGHS", "model refused")
+        raise SolverError("HiGHS", "model refused")
     return solver
 
 
@@ -168,7 +178,7 @@ def _program(matrix: Matrix) -> highspy.HighsLp:
 
 def _run(solver: highspy.Highs) -> None:
     if solver.run() == highspy.HighsStatus.kError:
-        raise SolverFault("HiGHS", f"error, {solver.getModelStatus()}")
+        raise SolverError("HiGHS", f"error, {solver.getModelStatus()}")
 
 
 def _ending(solver: highspy.Highs, matrix: Matrix, stopped: Stopped, seconds: float) -> Ending:

@@ -1,0 +1,1 @@
+"""The same tree and the same names as the code."""
