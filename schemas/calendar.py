@@ -57,6 +57,11 @@ class Calendar:
             found.append((day, range(indices[0], indices[-1] + 1)))
         return tuple(found)
 
+    @cached_property
+    def stretches(self) -> dict[tuple[time, time], list[tuple[date, list[int]]]]:
+        """Daily stretches between two wall times, each with its intervals; filled as they are asked for."""
+        return {}
+
     def is_border(self, instant: datetime) -> bool:
         """Tell whether an instant lies on an interval border, inside the window or beyond it."""
         return (instant - self.start) % self.interval == timedelta(0)
@@ -114,7 +119,9 @@ def rows_of(promise: Promise, calendar: Calendar) -> list[Row]:
         return [Row(day, members) for day, members in by_day if members]
     opening, closing = promise.between
     found = []
-    for day, members in _stretches(calendar, opening, closing):
+    if (opening, closing) not in calendar.stretches:
+        calendar.stretches[opening, closing] = _stretches(calendar, opening, closing)
+    for day, members in calendar.stretches[opening, closing]:
         began = datetime.combine(day, opening, ZoneInfo(calendar.timezone))
         counted = tuple(k for k in members if k in eligible)
         if began >= calendar.start and counted:

@@ -1,8 +1,9 @@
 """Commitments: what was promised, over which assets, when (contract, section 5)."""
 
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal
 
-from pydantic import Field, Tag
+from pydantic import BeforeValidator, Field, Tag
+from pydantic_core import PydanticCustomError
 
 from schemas.document import Document, tag, tagged_by
 from schemas.instants import Instant, WallTime
@@ -10,7 +11,17 @@ from schemas.quantities import LARGEST, MAX_ASSETS, Fraction, Id, Size, SizeSeri
 
 Direction = Literal["discharge", "charge"]
 ExcusedStretches = Annotated[list["Stretch"], Field(max_length=1_000)]
-Members = Annotated[list[Id], Field(min_length=1, max_length=MAX_ASSETS)]
+Members = Annotated[list[Id], Field(min_length=1, max_length=MAX_ASSETS, fail_fast=True)]
+
+
+def _only_true(value: Any) -> Any:
+    if value is not True:
+        raise PydanticCustomError("not_true", "must be true")
+    return value
+
+
+# A literal alone compares, and takes 1 for true.
+Always = Annotated[Literal[True], BeforeValidator(_only_true)]
 
 
 class Stretch(Document):
@@ -26,7 +37,7 @@ class AppliesTo(Document):
     assets: Members | None = None
     group: Members | None = None
     site: Id | None = None
-    fleet: Literal[True] | None = None
+    fleet: Always | None = None
 
 
 class Threshold(Document):

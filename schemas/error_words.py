@@ -52,6 +52,7 @@ def _tags(context: Context) -> str:
 # Raised by the contract's own readers, whose words stand as they are.
 OWN_WORDS: dict[str, Code] = {
     "not_text": "wrong-type",
+    "not_true": "wrong-type",
     "no_offset": "bad-format",
     "not_a_timestamp": "bad-format",
     "not_a_duration": "bad-format",
@@ -59,6 +60,7 @@ OWN_WORDS: dict[str, Code] = {
     "unknown_zone": "not-allowed",
     "out_of_range": "out-of-range",
     "too_many_members": "too-large",
+    "too_many_entries": "too-large",
 }
 
 _OBJECT = "must be an object"
@@ -112,7 +114,7 @@ _ALIKE: list[tuple[Code, str, str]] = [
     ("wrong-type", _NUMBER, "float_type float_parsing decimal_type decimal_parsing fraction_type complex_type"),
     ("wrong-type", _NUMBER, "fraction_parsing complex_str_parsing"),
     ("wrong-type", _WHOLE, "int_type int_parsing int_from_float"),
-    ("wrong-type", _TEXT, "string_type bytes_type url_type uuid_type invalid_key"),
+    ("wrong-type", _TEXT, "string_type string_sub_type bytes_type url_type uuid_type invalid_key"),
     ("wrong-type", _TRUTH, "bool_type bool_parsing"),
     ("wrong-type", _MOMENT, "datetime_type date_type time_type time_delta_type"),
     ("bad-format", _MOMENT, "datetime_parsing datetime_object_invalid datetime_from_date_parsing date_parsing"),

@@ -1,14 +1,15 @@
 """A job: today's question about a fleet and a window (contract, section 5)."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Set
 from typing import Annotated, Any, Literal
 
-from pydantic import Discriminator, Field, Tag
+from pydantic import Discriminator, Field, Tag, model_validator
 
 from schemas.commitments import Commitment
-from schemas.document import Document, NullMembersAbsent, tag, tagged_by
+from schemas.document import Document, tag, tagged_by
 from schemas.fleet import Fleet
 from schemas.instants import Instant
+from schemas.keyed import ByAsset, ByCommitment, ByMeter, ByProduct, BySite
 from schemas.quantities import (
     LARGEST,
     MAX_ASSETS,
@@ -26,6 +27,7 @@ from schemas.quantities import (
     Text,
     Title,
 )
+from schemas.schedule import AssetSchedule, Schedule
 from schemas.window import Window
 
 Lever = Literal["commitments", "targets", "planned_outages", "initial_energy", "limits"]
@@ -97,8 +99,7 @@ def _amount_or_by_asset(value: Any) -> str:
 
 
 CountedAmount = Annotated[
-    Annotated[Size, Tag(tag("amount"))]
-    | Annotated[dict[Id, Size], NullMembersAbsent, Field(max_length=MAX_ASSETS), Tag(tag("by-asset"))],
+    Annotated[Size, Tag(tag("amount"))] | Annotated[ByAsset[Size], Tag(tag("by-asset"))],
     Discriminator(_amount_or_by_asset),
 ]
 
@@ -106,9 +107,9 @@ CountedAmount = Annotated[
 class CountedBefore(Document):
     """What counts already: towards first rows, the first day's cycles and starts, the month's peak."""
 
-    commitments: Annotated[dict[Id, CountedAmount], NullMembersAbsent, Field(max_length=MAX_COMMITMENTS)] = {}
-    assets: Annotated[dict[Id, AssetCount], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
-    sites: Annotated[dict[Id, SiteCount], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
+    commitments: ByCommitment[CountedAmount] = {}
+    assets: ByAsset[AssetCount] = {}
+    sites: BySite[SiteCount] = {}
 
 
 class Callback(Document):
@@ -120,20 +121,30 @@ class Callback(Document):
 class ScheduleAsset(Document):
     """Decisions for one asset, as `check` takes them; what else a schedule document says of it is recomputed."""
 
-    model_config = {**Document.model_config, "extra": "ignore"}
-
     id: Id
     power_mw: SignedSeries
     on: ListOfTruths | None = None
-    reserve_mw: Annotated[dict[Id, SizeSeries], NullMembersAbsent] | None = None
+    reserve_mw: ByProduct[SizeSeries] | None = None
+
+    @model_validator(mode="before")
+    @classmethod
+    def _only_decisions_count(cls, value: Any) -> Any:
+        return _without(value, AssetSchedule.model_fields.keys() - cls.model_fields.keys())
 
 
 class ScheduleToCheck(Document):
     """A schedule to be replayed: bare decisions, or a whole schedule document."""
 
-    model_config = {**Document.model_config, "extra": "ignore"}
-
     assets: Annotated[list[ScheduleAsset], Field(max_length=MAX_ASSETS)]
+
+    @model_validator(mode="before")
+    @classmethod
+    def _only_decisions_count(cls, value: Any) -> Any:
+        return _without(value, Schedule.model_fields.keys() - cls.model_fields.keys())
+
+
+def _without(value: Any, names: Set[str]) -> Any:
+    return {name: member for name, member in value.items() if name not in names} if isinstance(value, dict) else value
 
 
 class Actuals(Document):
@@ -152,17 +163,15 @@ class Question(Document):
     note: Text | None = None
     fleet: Fleet | None = None
     fleet_id: Id | None = None
-    initial: Annotated[dict[Id, Initial], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
+    initial: ByAsset[Initial] = {}
     missing_initial: Literal["refuse", "assume_middle", "hold_out"] = "refuse"
     initial_from_job_id: Id | None = None
-    targets: Annotated[dict[Id, Target], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
-    forecasts: Annotated[dict[Id, SizeSeries], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
-    energy_needs: Annotated[
-        dict[Id, Annotated[list[EnergyNeed], Field(max_length=1_000)]], NullMembersAbsent, Field(max_length=MAX_ASSETS)
-    ] = {}
-    positions: Annotated[dict[Id, SignedSeries], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
+    targets: ByAsset[Target] = {}
+    forecasts: ByAsset[SizeSeries] = {}
+    energy_needs: ByAsset[Annotated[list[EnergyNeed], Field(max_length=1_000)]] = {}
+    positions: ByMeter[SignedSeries] = {}
     outages: Annotated[list[Outage], Field(max_length=MAX_OUTAGES)] = []
-    limits: Annotated[dict[Id, TodaysLimits], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
+    limits: ByMeter[TodaysLimits] = {}
     counted_before: CountedBefore = CountedBefore()
     commitments: Annotated[list[Commitment], Field(max_length=MAX_COMMITMENTS)] = []
     method: Method = "auto"
@@ -210,7 +219,7 @@ class RescheduleJob(OneWindow):
 
     task: Literal["reschedule"]
     previous_job_id: Id
-    actuals: Annotated[dict[Id, Actuals], NullMembersAbsent, Field(max_length=MAX_ASSETS)] = {}
+    actuals: ByAsset[Actuals] = {}
     locked_until: Instant | None = None
     deviation_price_per_mwh: Size = 0.0
 

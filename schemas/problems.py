@@ -98,13 +98,15 @@ class RefusedError(Exception):
         """Write the refusal as an error answer, with the first 100 faults."""
         meaning = PROBLEM_TYPES[self.problem_type]
         count = len(self.faults)
+        is_cut = count > MAX_REPORTED_FAULTS
+        several = f"{count} faults were found" if not is_cut else f"the first {MAX_REPORTED_FAULTS} faults are listed"
         return Problem(
             type=f"/problems/{self.problem_type}",
             title=meaning.title,
             status=meaning.status,
-            detail=self.faults[0].detail if count == 1 else f"{count} faults were found",
+            detail=self.faults[0].detail if count == 1 else several,
             errors=list(self.faults[:MAX_REPORTED_FAULTS]),
-            errors_truncated=count > MAX_REPORTED_FAULTS,
+            errors_truncated=is_cut,
         )
 
 

@@ -9,6 +9,7 @@ from pydantic import TypeAdapter, ValidationError
 from pydantic_core import ErrorDetails
 
 from schemas.checks import faults_of
+from schemas.document import FaultBudget
 from schemas.error_words import OWN_WORDS, code_and_detail
 from schemas.job import Job
 from schemas.json_text import read_json
@@ -18,6 +19,8 @@ from schemas.problems import Fault, InvalidRequest, pointer
 __all__ = ["read_job", "read_json"]
 
 MOST_FAULTS_KEPT = 1_000
+# Documents within documents count the same fault once each, four levels at most.
+MOST_FAULTS_SOUGHT = 4 * MOST_FAULTS_KEPT
 _NAME_LIKENESS = 0.7
 
 
@@ -28,7 +31,7 @@ def read_job(document: object) -> Job:
     answer names as much as can be known.
     """
     try:
-        job = _contract().validate_python(document)
+        job = _contract().validate_python(document, context=FaultBudget(MOST_FAULTS_SOUGHT))
     except ValidationError as wrong:
         errors = wrong.errors(include_url=False, include_input=False)
         faults = [_fault(error, document) for error in errors[:MOST_FAULTS_KEPT]]
@@ -46,10 +49,9 @@ def _contract() -> TypeAdapter[Job]:
 
 def _faults_across_the_rest(document: object, errors: list[ErrorDetails]) -> Iterator[Fault]:
     """Check what can be checked without the members that are at fault themselves."""
-    places = {place_of(Job, error["loc"], error["type"]).steps[:1] for error in errors}
-    unread = frozenset(str(steps[0]) for steps in places if steps)
-    if not isinstance(document, Mapping) or () in places or "task" in unread:
-        return
+    if not isinstance(document, Mapping) or any(len(error["loc"]) < 2 for error in errors):
+        return  # no object, or no known task
+    unread = frozenset(str(error["loc"][1]) for error in errors)  # behind the tag of the task
     rest = {name: member for name, member in document.items() if name not in unread}
     try:
         job = _contract().validate_python(rest)

@@ -2,10 +2,8 @@
 
 from math import isfinite
 
-from schemas.coupling import couplings
 from schemas.diagnosis import Diagnosis
 from schemas.job import CheckJob, Job, ScheduleJob
-from schemas.problems import InvalidRequest
 from schemas.schedule import Schedule, Undecided, Violation
 from schemas.support import require_supported
 from workers.planning import answer
@@ -34,16 +32,14 @@ class PlanningError(Exception):
 def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
     """Plan a validated job whose documents are inline.
 
-    Raises Unsupported for what cannot be planned yet, InvalidRequest for `per_asset` on coupled assets, PlanningError
-    where no answer can be trusted. Infeasible and out of time are answers.
+    Raises Unsupported for what cannot be planned yet, PlanningError where no answer can be trusted. Infeasible and out
+    of time are answers.
     """
     require_supported(job)
     if isinstance(job, CheckJob):
         return _checked(job, limits)
     if not isinstance(job, ScheduleJob):
         raise ValueError(f"the task {job.task} passed as supported, but nothing here does it")
-    if job.method == "per_asset" and (faults := couplings(job)):
-        raise InvalidRequest(faults)
     watch = watch or Unwatched()
     watch.progress("indexing", 0.0)
     instance = instance_of(job)

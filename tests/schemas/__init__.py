@@ -1,0 +1,1 @@
+"""The contract is read whole, exactly, and without repair."""
