@@ -7,10 +7,11 @@ import subprocess
 import sys
 from io import StringIO
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import pytest
 
+from schemas.schedule import Outcome
 from workers.plan_file import STATUS_OF, ProgressSign
 
 PLANNER = [sys.executable, "-I", "-m", "workers.plan_file"]
@@ -236,7 +237,7 @@ def test_a_reader_that_went_away_is_no_fault_to_talk_about() -> None:
 @pytest.mark.parametrize("locale", ["C", "POSIX", "en_US.ISO-8859-1"])
 def test_the_answer_is_utf_8_in_any_locale(locale: str) -> None:
     status, _, words = planned(
-        request(label="Größe", **{"größe": 1}), env={"LANG": locale, "LC_ALL": locale, "PATH": os.environ["PATH"]}
+        request(label="Größe", größe=1), env={"LANG": locale, "LC_ALL": locale, "PATH": os.environ["PATH"]}
     )
     assert status == 2
     assert words.startswith("/gr")
@@ -250,7 +251,7 @@ def test_a_fault_of_ours_ends_with_1_with_its_evidence_and_without_an_answer() -
         "from workers.planning import plan\n"
         "def faulty(*_):\n"
         "    said = Violation(rule='r', pointer='/fleet', amount=1.0, unit='MW', text='one MW too much')\n"
-        "    raise plan.PlanningFault('the audit refuses', [said])\n"
+        "    raise plan.PlanningError('the audit refuses', [said])\n"
         "plan.plan = faulty\n"
         "sys.exit(plan_file.main(['-']))\n"
     )
@@ -264,7 +265,7 @@ def test_a_fault_of_ours_ends_with_1_with_its_evidence_and_without_an_answer() -
     assert (done.returncode, done.stdout) == (1, b"")
     *_, evidence, last = done.stderr.decode().splitlines()
     assert evidence == "evidence: /fleet: one MW too much"
-    assert last.startswith("a fault of ours, not of the request: PlanningFault")
+    assert last.startswith("a fault of ours, not of the request: PlanningError")
 
 
 def test_an_interrupt_ends_it_with_130_and_without_a_word_while_a_solver_runs() -> None:
@@ -315,18 +316,13 @@ def test_progress_shows_on_a_terminal_after_a_second_and_leaves_nothing_behind()
 
 
 def test_progress_is_silent_where_no_person_looks_on() -> None:
-    seconds, file = 0.0, StringIO()
+    file = StringIO()
     for stream in (file, None):
-        sign = ProgressSign(stream, lambda: seconds)
-        seconds += 60.0
+        sign = ProgressSign(stream, iter((0.0, 60.0)).__next__)
         sign.show()
         sign.clear()
     assert file.getvalue() == ""
 
 
 def test_every_outcome_has_an_exit_status() -> None:
-    from typing import get_args
-
-    from schemas.schedule import Outcome
-
     assert set(STATUS_OF) == set(get_args(Outcome))

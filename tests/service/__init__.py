@@ -1,0 +1,1 @@
+"""Tests of the service, in the folders of what they test."""
