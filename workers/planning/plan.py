@@ -46,6 +46,7 @@ def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
     if findings := screen(instance):
         return _refused(job, findings)
     choice = choose(instance, job.method)
+    watch.progress("solving", 0.0)
     found = solve(choice, limits, watch, seed=job.seed)
     if found.infeasible_parts:
         return _proven_infeasible(job, found.infeasible_parts)

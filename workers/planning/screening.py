@@ -5,7 +5,7 @@ can flow, how many intervals there are. The sentences are those of the diagnosis
 when.
 """
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from datetime import datetime
 
@@ -73,8 +73,9 @@ def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
             )
             return
     if most < store.final_floor_mwh - SLACK_MWH:
+        target = (f"/targets/{store.id}/final_stored_mwh", f"at least {store.final_floor_mwh:g} MWh at the end")
         yield Finding(
-            ((f"/targets/{store.id}/final_stored_mwh", f"at least {store.final_floor_mwh:g} MWh at the end"),),
+            (target, *((outage.pointer, outage.text) for outage in store.outages)),
             f"{store.id} shall hold {store.final_floor_mwh:g} MWh at {_clock(instance, instance.intervals)}; "
             f"at most {most:g} MWh can be there.",
         )
@@ -99,13 +100,24 @@ def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
     if len(counted) < due:
         unit = f" in unbroken stretches of {row.min_block * instance.hours:g} h" if row.min_block > 1 else ""
         yield Finding(
-            (member,),
+            (member, *_outages(instance, row.stores, row.intervals)),
             f"{_words(row)} cannot fit: limits and outages allow it for at most "
             f"{len(counted) * instance.hours:g} h{unit} of the time that counts.",
         )
         return
     if row.asset is not None and len(row.stores) == 1 and row.sign > 0:
         yield from _energy_for_hours(instance, row, instance.stores[row.stores[0]], counted, due, member)
+
+
+def _outages(instance: Instance, stores: Iterable[int], intervals: Iterable[int]) -> list[tuple[str, str]]:
+    """Name the outages of these stores that touch any of the intervals: what they leave is all there is."""
+    asked = set(intervals)
+    return [
+        (outage.pointer, outage.text)
+        for number in stores
+        for outage in instance.stores[number].outages
+        if asked.intersection(outage.intervals)
+    ]
 
 
 def _in_blocks(able: list[int], least: int) -> list[int]:
@@ -156,7 +168,7 @@ def _energy_for_hours(
         spare = store.initial_mwh - kept_back
         if needed > spare + charged + SLACK_MWH:
             yield Finding(
-                members,
+                (*members, *_outages(instance, row.stores, range(until + 1))),
                 f"{paid * hours:g} h at {row.threshold_mw:g} MW need {needed:g} MWh from {store.id} between "
                 f"{_clock(instance, counted[0])} and {_clock(instance, last + 1)}; {spare:g} MWh above {what} at the "
                 f"start and at most {charged:g} MWh charged by {_clock(instance, until + 1)} make at most "

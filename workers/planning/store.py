@@ -2,13 +2,14 @@
 
 from dataclasses import dataclass
 from math import ceil, floor
+from zoneinfo import ZoneInfo
 
 import numpy as np
 from numpy.typing import NDArray
 
 from schemas.calendar import Calendar
 from schemas.fleet import Storage
-from schemas.job import OneWindow
+from schemas.job import OneWindow, Outage
 from workers.planning.availability import Availability
 
 Floats = NDArray[np.float64]
@@ -24,6 +25,15 @@ class DayAllowance:
 
     intervals: range
     amount: float
+
+
+@dataclass(frozen=True)
+class OutOfService:
+    """An outage as the request lists it: its place there, in words, and the intervals it touches."""
+
+    pointer: str
+    text: str
+    intervals: range
 
 
 @dataclass(frozen=True)
@@ -62,6 +72,7 @@ class Store:
     min_rest: int
     direction_before: int
     held_intervals: int
+    outages: tuple[OutOfService, ...] = ()
 
     @property
     def can_discharge(self) -> Booleans:
@@ -112,7 +123,7 @@ def initial_energy(job: OneWindow, asset: Storage) -> float:
 
 
 def store_of(job: OneWindow, asset: Storage, calendar: Calendar, available: Availability | None) -> Store:
-    """Index one storage asset."""
+    """Index one storage asset; `available` is what its outages leave, None where it has none."""
     count, hours = calendar.count, calendar.hours
     held_out = job.missing_initial == "hold_out" and asset.id not in job.initial
     kept = (1 - asset.self_discharge_per_hour) ** hours
@@ -152,7 +163,22 @@ def store_of(job: OneWindow, asset: Storage, calendar: Calendar, available: Avai
         min_rest=min_rest,
         direction_before=direction,
         held_intervals=_held(min_run if direction else min_rest, elapsed, hours),
+        outages=_outages(job, asset.id, calendar) if available is not None else (),
     )
+
+
+def _outages(job: OneWindow, asset: str, calendar: Calendar) -> tuple[OutOfService, ...]:
+    return tuple(
+        OutOfService(f"/outages/{number}", _outage_text(outage, calendar), calendar.touching(outage.from_, outage.to))
+        for number, outage in enumerate(job.outages)
+        if outage.asset == asset
+    )
+
+
+def _outage_text(outage: Outage, calendar: Calendar) -> str:
+    zone = ZoneInfo(calendar.timezone)
+    until = "further notice" if outage.to is None else f"{outage.to.astimezone(zone):%Y-%m-%d %H:%M}"
+    return f"{outage.kind} outage of {outage.asset} from {outage.from_.astimezone(zone):%Y-%m-%d %H:%M} until {until}"
 
 
 def _ceiling(asset: Storage) -> float:

@@ -1,6 +1,6 @@
 """A day discharges no more than so many times the capacity.
 
-    sum of h*d[a,t] over the local day  <=  n[a] * E[a] - what the day had discharged before          (1)
+    sum of h*d[a,t] over the local day  <=  max(0, n[a] * E[a] - what the day had discharged before)   (1)
 
 n    cycles per day; E  energy capacity, MWh; d  discharging power at the terminals, MW
 """

@@ -52,6 +52,7 @@ def test_fewer_hours_break_a_binding_commitment() -> None:
     )
     assert found.text == "firm: quay-b1 discharges 1 MW or more for 1 h, 1 h short of 2 h"
     assert (result.commitments[0].delivered_hours, result.commitments[0].met) == (1.0, False)
+    assert result.totals.shortfall_cost == 0.0
 
 
 def test_a_millionth_of_a_mw_below_the_threshold_counts_and_is_remembered() -> None:

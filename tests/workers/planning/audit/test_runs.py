@@ -36,6 +36,13 @@ def test_a_shorter_run_breaks_the_run_time() -> None:
     assert found.interval_start.hour == 1
 
 
+def test_up_to_a_millionth_of_a_mw_a_store_rests() -> None:
+    asset = runner(min_rest_hours=1)
+    for idle in (1e-6, -1e-6):
+        assert broken(one_store([1.0, idle, 1.0], asset=asset)) == []
+        assert broken(one_store([1.0, idle, 1.0], asset=runner(min_rest_hours=2))) == ["min_rest"]
+
+
 def test_charging_runs_have_the_same_run_time() -> None:
     assert broken(one_store([-1.0, -1.0, 0.0], asset=runner(min_run_hours=2))) == []
     assert broken(one_store([-1.0, 0.0, 0.0], asset=runner(min_run_hours=2))) == ["min_run"]
@@ -171,6 +178,12 @@ def test_a_run_under_way_is_no_start_but_one_the_other_way_is() -> None:
     assert broken(one_store([1.0, 0.0], asset=asset, initial=before(1.0))) == []
     assert broken(one_store([-1.0, 0.0], asset=asset, initial=before(1.0))) == ["max_starts_per_day"]
     assert broken(one_store([1.0, 0.0], asset=asset, initial=before(0.0))) == ["max_starts_per_day"]
+
+
+def test_a_day_that_had_more_starts_than_it_may_has_none_left_and_owes_none() -> None:
+    asset, counted = runner(max_starts_per_day=1), {"assets": {"quay-b1": {"starts": 3}}}
+    assert broken(one_store([0.0, 0.0], asset=asset, counted_before=counted)) == []
+    assert broken(one_store([0.0, 1.0], asset=asset, counted_before=counted)) == ["max_starts_per_day"]
 
 
 def test_starts_before_the_window_count_towards_its_first_day_only() -> None:

@@ -150,6 +150,14 @@ def test_each_local_day_has_its_own_cycles_and_the_first_one_what_was_counted_be
     assert "2027-03-10" in found.text
 
 
+def test_a_day_that_had_more_cycles_than_it_may_has_none_left_and_owes_none() -> None:
+    asset = store(max_cycles_per_day=0.2)
+    before = {"assets": {"quay-b1": {"discharged_mwh": 50.0}}}
+    assert broken(one_store([0.0, -1.0], asset=asset, counted_before=before)) == []
+    found = only(one_store([0.25, 0.0], asset=asset, counted_before=before))
+    assert (found.rule, found.amount) == ("max_cycles_per_day", pytest.approx(0.25))
+
+
 def test_energy_out_over_energy_in_of_a_cyclic_schedule_is_the_product_of_both_efficiencies() -> None:
     # Round-trip efficiency as IEC 62933-2-1:2017 defines it (from memory): energy discharged over energy absorbed at
     # the point of connection, over a cycle that ends at the initial state of charge.
