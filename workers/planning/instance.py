@@ -3,21 +3,22 @@
 Everything after this module works on intervals, MW, MWh and the window's currency. The audit never sees it.
 """
 
-from collections.abc import Iterable
-from dataclasses import dataclass, field, replace
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
-from schemas.calendar import Calendar, rows_of
-from schemas.commitments import HoursAtLeast
-from schemas.fleet import FixedLoad, Fleet, Storage
+from schemas.calendar import Calendar
+from schemas.fleet import FixedLoad, Fleet, FlexibleLoad, Generator, Renewable, Storage
 from schemas.job import OneWindow
 from schemas.window import Window
 from workers.planning.availability import Availability, availability_of
+from workers.planning.flows import flexible_load_of, renewable_of
+from workers.planning.generator import generator_of
+from workers.planning.reserve import Product, products_of_window
+from workers.planning.rows import CommitmentRow, Ground, rows_of_job
 from workers.planning.store import Store, store_of
-
-Floats = NDArray[np.float64]
+from workers.planning.units import Booleans, Floats, Unit, series
 
 
 @dataclass(frozen=True)
@@ -30,8 +31,9 @@ class Meter:
 
     id: str
     pointer: str
-    stores: tuple[int, ...]
+    units: tuple[int, ...]
     load_mw: Floats
+    lot_mw: float | None
     export_limit_mw: Floats
     import_limit_mw: Floats
     position_mw: Floats
@@ -42,45 +44,23 @@ class Meter:
 
     @property
     def is_limited(self) -> bool:
-        """Tell whether the connection has any limit."""
-        return bool(np.isfinite(self.export_limit_mw).any() or np.isfinite(self.import_limit_mw).any())
-
-
-@dataclass(frozen=True)
-class HoursRow:
-    """One row of an `hours_at_least` commitment.
-
-    Power is that of `stores` less `load_mw` (T values; zero for a commitment on assets), times `sign` (+1
-    discharge, -1 charge). `intervals` are those that count, `excused` the ones among them that count whatever
-    the power; `due_hours` is what is left to deliver after the credit.
-    """
-
-    commitment: int
-    id: str
-    asset: str | None
-    day: str | None
-    stores: tuple[int, ...]
-    load_mw: Floats
-    sign: float
-    threshold_mw: float
-    intervals: tuple[int, ...]
-    excused: frozenset[int]
-    due_hours: float
-    min_block: int
-    shortfall_price_per_hour: float | None
+        """Tell whether the connection has any limit, or trades in lots."""
+        finite = np.isfinite(self.export_limit_mw).any() or np.isfinite(self.import_limit_mw).any()
+        return bool(finite) or self.lot_mw is not None
 
     @property
-    def pointer(self) -> str:
-        """Where the commitment stands in the request."""
-        return f"/commitments/{self.commitment}"
+    def is_islanded(self) -> Booleans:
+        """Intervals in which nothing may flow either way: reserve then serves the meter's own load."""
+        islanded: Booleans = (self.export_limit_mw == 0) & (self.import_limit_mw == 0)
+        return islanded
 
 
 @dataclass(frozen=True)
 class Instance:
-    """A request in arrays: T intervals of `hours` each, stores, meters, rows.
+    """A request in arrays: T intervals of `hours` each, units, meters, rows.
 
     `buy` and `sell` are prices per MWh, T values. With `settles_fleet` one settlement covers all meters, against
-    `fleet`'s position. `fixed_loads` are ids whose power follows from `load_mw` alone.
+    `fleet`'s position. Fixed loads are no units: their power is in the meters' `load_mw`.
     """
 
     calendar: Calendar
@@ -88,13 +68,13 @@ class Instance:
     buy: Floats
     sell: Floats
     settles_fleet: bool
-    stores: tuple[Store, ...]
+    units: tuple[Unit, ...]
     meters: tuple[Meter, ...]
     fleet: Meter
-    rows: tuple[HoursRow, ...]
+    rows: tuple[CommitmentRow, ...]
+    products: tuple[Product, ...]
     relative_gap: float
     absolute_gap: float
-    fixed_loads: tuple[str, ...] = field(default=())
 
     @property
     def intervals(self) -> int:
@@ -106,17 +86,22 @@ class Instance:
         """Tell whether buying and selling cost the same everywhere."""
         return bool((self.buy == self.sell).all())
 
-    def part(self, meters: Iterable[Meter], rows: Iterable[HoursRow]) -> "Instance":
-        """Take some meters with their stores and rows as an instance of their own, stores numbered anew."""
+    @property
+    def stores(self) -> tuple[Store, ...]:
+        """The units that are stores."""
+        return tuple(unit for unit in self.units if isinstance(unit, Store))
+
+    def part(self, meters: Iterable[Meter], rows: Iterable[CommitmentRow]) -> "Instance":
+        """Take some meters with their units and rows as an instance of their own, units numbered anew."""
         kept = tuple(meters)
-        numbers = [store for meter in kept for store in meter.stores]
+        numbers = [unit for meter in kept for unit in meter.units]
         renumbered = {old: new for new, old in enumerate(numbers)}
-        kept = tuple(replace(meter, stores=tuple(renumbered[s] for s in meter.stores)) for meter in kept)
-        own_rows = tuple(replace(row, stores=tuple(renumbered[s] for s in row.stores)) for row in rows)
+        kept = tuple(replace(meter, units=tuple(renumbered[u] for u in meter.units)) for meter in kept)
+        own_rows = tuple(replace(row, units=tuple(renumbered[u] for u in row.units)) for row in rows)
         load: Floats = sum((meter.load_mw for meter in kept), start=np.zeros(self.intervals))
-        fleet = replace(self.fleet, stores=tuple(range(len(numbers))), load_mw=load)
-        stores = tuple(self.stores[number] for number in numbers)
-        return replace(self, stores=stores, meters=kept, fleet=fleet, rows=own_rows)
+        fleet = replace(self.fleet, units=tuple(range(len(numbers))), load_mw=load)
+        units = tuple(self.units[number] for number in numbers)
+        return replace(self, units=units, meters=kept, fleet=fleet, rows=own_rows)
 
 
 def instance_of(job: OneWindow) -> Instance:
@@ -126,17 +111,18 @@ def instance_of(job: OneWindow) -> Instance:
         raise ValueError("the job must carry its fleet and its window inline")
     calendar = Calendar.of(window)
     available = availability_of(job, calendar)
-    stores = tuple(
-        store_of(job, asset, calendar, available.get(asset.id)) for asset in fleet.assets if isinstance(asset, Storage)
-    )
-    numbers = {store.id: number for number, store in enumerate(stores)}
+    units = tuple(_units(job, fleet, calendar, available))
+    numbers = {unit.id: number for number, unit in enumerate(units)}
     loads = {
-        asset.id: _series(job.forecasts[asset.id], calendar.count) * _share(available, asset.id, calendar.count)
+        asset.id: series(job.forecasts[asset.id], calendar.count) * _share(available, asset.id, calendar.count)
         for asset in fleet.assets
         if isinstance(asset, FixedLoad)
     }
-    meters = _meters(job, fleet, stores, numbers, loads, calendar.count)
-    whole = _fleet_meter(job, fleet, meters, calendar.count)
+
+    def drawn(assets: Iterable[str]) -> Floats:
+        return _load(assets, units, numbers, loads, calendar.count)
+
+    meters = tuple(_meters(job, fleet, numbers, drawn, calendar.count))
     buy, sell = _prices(window, calendar.count)
     return Instance(
         calendar=calendar,
@@ -144,18 +130,27 @@ def instance_of(job: OneWindow) -> Instance:
         buy=buy,
         sell=sell,
         settles_fleet=window.settled_at == "fleet",
-        stores=stores,
+        units=units,
         meters=meters,
-        fleet=whole,
-        rows=tuple(_rows(job, fleet, stores, numbers, loads, calendar)),
+        fleet=_fleet_meter(job, fleet, meters, calendar.count),
+        rows=tuple(rows_of_job(Ground(job, fleet, calendar, units, numbers, drawn, loads))),
+        products=products_of_window(window, calendar),
         relative_gap=job.relative_gap,
         absolute_gap=job.absolute_gap,
-        fixed_loads=tuple(loads),
     )
 
 
-def _series(value: float | list[float], count: int) -> Floats:
-    return np.full(count, value, dtype=float) if isinstance(value, int | float) else np.asarray(value, dtype=float)
+def _units(job: OneWindow, fleet: Fleet, calendar: Calendar, available: dict[str, Availability]) -> Iterator[Unit]:
+    for asset in fleet.assets:
+        left = available.get(asset.id)
+        if isinstance(asset, Storage):
+            yield store_of(job, asset, calendar, left)
+        elif isinstance(asset, Generator):
+            yield generator_of(job, asset, calendar, left)
+        elif isinstance(asset, Renewable):
+            yield renewable_of(job, asset, calendar, left)
+        elif isinstance(asset, FlexibleLoad):
+            yield flexible_load_of(job, asset, calendar, left)
 
 
 def _share(available: dict[str, Availability], asset: str, count: int) -> Floats:
@@ -164,11 +159,11 @@ def _share(available: dict[str, Availability], asset: str, count: int) -> Floats
 
 def _prices(window: Window, count: int) -> tuple[Floats, Floats]:
     if window.price_per_mwh is not None:
-        price = _series(window.price_per_mwh, count)
+        price = series(window.price_per_mwh, count)
         return price, price
     if window.buy_price_per_mwh is None or window.sell_price_per_mwh is None:
         raise ValueError("a window has one price, or a price to buy and one to sell")
-    return _series(window.buy_price_per_mwh, count), _series(window.sell_price_per_mwh, count)
+    return series(window.buy_price_per_mwh, count), series(window.sell_price_per_mwh, count)
 
 
 def _limit(job: OneWindow, meter: str, member: str, own: float | None, count: int) -> Floats:
@@ -176,17 +171,12 @@ def _limit(job: OneWindow, meter: str, member: str, own: float | None, count: in
     value = getattr(todays, member) if todays is not None else None
     if value is None:
         value = np.inf if own is None else own
-    return _series(value, count)
+    return series(value, count)
 
 
 def _meters(
-    job: OneWindow,
-    fleet: Fleet,
-    stores: tuple[Store, ...],
-    numbers: dict[str, int],
-    loads: dict[str, Floats],
-    count: int,
-) -> tuple[Meter, ...]:
+    job: OneWindow, fleet: Fleet, numbers: dict[str, int], drawn: Callable[[Iterable[str]], Floats], count: int
+) -> Iterator[Meter]:
     members: dict[str, list[str]] = {site.id: [] for site in fleet.sites}
     pointers = {site.id: f"/fleet/sites/{k}" for k, site in enumerate(fleet.sites)}
     for k, asset in enumerate(fleet.assets):
@@ -194,31 +184,27 @@ def _meters(
         if asset.site is None:
             pointers[asset.id] = f"/fleet/assets/{k}"
     sites = {site.id: site for site in fleet.sites}
-    found = []
     for meter, assets in members.items():
         site = sites.get(meter)
         counted = job.counted_before.sites.get(meter)
-        own = tuple(numbers[asset] for asset in assets if asset in numbers)
-        found.append(
-            Meter(
-                id=meter,
-                pointer=pointers[meter],
-                stores=own,
-                load_mw=_load(assets, stores, numbers, loads, count),
-                export_limit_mw=_limit(job, meter, "export_limit_mw", site.export_limit_mw if site else None, count),
-                import_limit_mw=_limit(job, meter, "import_limit_mw", site.import_limit_mw if site else None, count),
-                position_mw=_series(job.positions.get(meter, 0.0), count),
-                export_fee_per_mwh=site.export_fee_per_mwh if site else 0.0,
-                import_fee_per_mwh=site.import_fee_per_mwh if site else 0.0,
-                peak_import_charge_per_mw=site.peak_import_charge_per_mw if site else 0.0,
-                peak_so_far_mw=counted.peak_import_mw if counted else 0.0,
-            )
+        yield Meter(
+            id=meter,
+            pointer=pointers[meter],
+            units=tuple(numbers[asset] for asset in assets if asset in numbers),
+            load_mw=drawn(assets),
+            lot_mw=site.lot_mw if site else None,
+            export_limit_mw=_limit(job, meter, "export_limit_mw", site.export_limit_mw if site else None, count),
+            import_limit_mw=_limit(job, meter, "import_limit_mw", site.import_limit_mw if site else None, count),
+            position_mw=series(job.positions.get(meter, 0.0), count),
+            export_fee_per_mwh=site.export_fee_per_mwh if site else 0.0,
+            import_fee_per_mwh=site.import_fee_per_mwh if site else 0.0,
+            peak_import_charge_per_mw=site.peak_import_charge_per_mw if site else 0.0,
+            peak_so_far_mw=counted.peak_import_mw if counted else 0.0,
         )
-    return tuple(found)
 
 
 def _load(
-    assets: Iterable[str], stores: tuple[Store, ...], numbers: dict[str, int], loads: dict[str, Floats], count: int
+    assets: Iterable[str], units: tuple[Unit, ...], numbers: dict[str, int], loads: dict[str, Floats], count: int
 ) -> Floats:
     """Sum what fixed loads and standby loads of these assets draw, MW per interval."""
     drawn = np.zeros(count)
@@ -226,7 +212,7 @@ def _load(
         if asset in loads:
             drawn += loads[asset]
         elif asset in numbers:
-            drawn += stores[numbers[asset]].standby_load_mw
+            drawn += units[numbers[asset]].standby_load_mw
     return drawn
 
 
@@ -235,74 +221,10 @@ def _fleet_meter(job: OneWindow, fleet: Fleet, meters: tuple[Meter, ...], count:
     return Meter(
         id="fleet",
         pointer="/fleet",
-        stores=tuple(store for meter in meters for store in meter.stores),
+        units=tuple(unit for meter in meters for unit in meter.units),
         load_mw=load,
+        lot_mw=fleet.lot_mw,
         export_limit_mw=_limit(job, "fleet", "export_limit_mw", fleet.export_limit_mw, count),
         import_limit_mw=_limit(job, "fleet", "import_limit_mw", fleet.import_limit_mw, count),
-        position_mw=_series(job.positions.get("fleet", 0.0), count),
+        position_mw=series(job.positions.get("fleet", 0.0), count),
     )
-
-
-def _rows(
-    job: OneWindow,
-    fleet: Fleet,
-    stores: tuple[Store, ...],
-    numbers: dict[str, int],
-    loads: dict[str, Floats],
-    calendar: Calendar,
-) -> Iterable[HoursRow]:
-    everything = [asset.id for asset in fleet.assets]
-    at_site: dict[str, list[str]] = {}
-    for asset in fleet.assets:
-        if asset.site is not None:
-            at_site.setdefault(asset.site, []).append(asset.id)
-    for number, commitment in enumerate(job.commitments):
-        if not isinstance(commitment, HoursAtLeast):
-            raise ValueError(f"commitment {commitment.id} is of a kind that is not planned")
-        whom = commitment.applies_to
-        if whom.assets is not None:
-            bound: list[tuple[str | None, list[str]]] = [(asset, [asset]) for asset in whom.assets]
-        else:
-            of_site = at_site.get(whom.site, []) if whom.site is not None else everything
-            bound = [(None, list(whom.group) if whom.group is not None else of_site)]
-        stretches = rows_of(commitment, calendar)
-        excused = frozenset(
-            k for stretch in commitment.excused for k in calendar.starting_within(stretch.from_, stretch.to)
-        )
-        for whose, members in bound:
-            own = tuple(numbers[member] for member in members if member in numbers)
-            if whose is None:
-                load = _load(members, stores, numbers, loads, calendar.count)
-            else:
-                load = loads.get(whose, np.zeros(calendar.count))
-            for order, stretch in enumerate(stretches):
-                yield HoursRow(
-                    commitment=number,
-                    id=commitment.id,
-                    asset=whose,
-                    day=stretch.day.isoformat() if stretch.day else None,
-                    stores=own,
-                    load_mw=load,
-                    sign=1.0 if commitment.direction == "discharge" else -1.0,
-                    threshold_mw=_threshold(commitment, [stores[k] for k in own]) + commitment.headroom_mw,
-                    intervals=stretch.intervals,
-                    excused=excused.intersection(stretch.intervals),
-                    due_hours=commitment.hours - (_credit(job, commitment, whose) if order == 0 else 0.0),
-                    min_block=max(1, round(commitment.min_block_hours / calendar.hours)),
-                    shortfall_price_per_hour=commitment.shortfall_price_per_hour,
-                )
-
-
-def _threshold(commitment: HoursAtLeast, stores: list[Store]) -> float:
-    if commitment.threshold.mw is not None:
-        return commitment.threshold.mw
-    charging = commitment.direction == "charge"
-    rated = sum(store.rated_charge_mw if charging else store.rated_discharge_mw for store in stores)
-    return (commitment.threshold.fraction_of_rated or 0.0) * rated
-
-
-def _credit(job: OneWindow, commitment: HoursAtLeast, asset: str | None) -> float:
-    counted = job.counted_before.commitments.get(commitment.id, 0.0)
-    if isinstance(counted, dict):
-        return counted.get(asset, 0.0) if asset is not None else 0.0
-    return counted

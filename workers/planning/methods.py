@@ -1,4 +1,4 @@
-"""How a request is solved: store by store, part by part, or all at once."""
+"""How a request is solved: unit by unit, part by part, or all at once."""
 
 from collections.abc import Callable, Iterable
 from concurrent.futures import ThreadPoolExecutor
@@ -48,13 +48,13 @@ class Found:
     @property
     def has_schedule(self) -> bool:
         """Tell whether every part has a feasible schedule in hand."""
-        return all(solution.power_mw is not None for solution in self.solutions)
+        return all(solution.plans is not None for solution in self.solutions)
 
 
 def choose(instance: Instance, asked: str) -> Choice:
     """Choose parts and method from the request alone."""
     parts = tuple(independent_parts(instance))
-    alone = all(len(part.stores) <= 1 for part in parts)
+    alone = all(len(part.units) <= 1 for part in parts)
     if asked == "milp":
         if alone:
             return Choice("milp", (instance,), "asked for by name: one joint model")
@@ -66,8 +66,8 @@ def choose(instance: Instance, asked: str) -> Choice:
 
 
 def _counted(parts: Iterable[Instance]) -> str:
-    sizes = [len(part.stores) for part in parts]
-    return f"{len(sizes)} independent part(s), the largest with {max(sizes)} store(s)"
+    sizes = [len(part.units) for part in parts]
+    return f"{len(sizes)} independent part(s), the largest with {max(sizes)} plant(s)"
 
 
 def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: bool = False) -> Found:

@@ -88,7 +88,7 @@ class Model:
         block.variables = pmo.variable_tuple(variables)
         if self.row_count:
             block.rows = pmo.matrix_constraint(
-                self._matrix(), lb=_joined(self._row_lower), ub=_joined(self._row_upper), x=block.variables
+                self.matrix(), lb=_joined(self._row_lower), ub=_joined(self._row_upper), x=block.variables
             )
         money = np.zeros(self.column_count)
         for columns, amounts in self._money:
@@ -98,7 +98,10 @@ class Model:
         block.margin = pmo.objective(terms, sense=pmo.maximize)
         return block
 
-    def _matrix(self) -> csr_matrix:
+    def matrix(self) -> csr_matrix:
+        """Give the rows as one sparse matrix."""
+        if not self._entries:
+            return csr_matrix((self.row_count, self.column_count))
         numbers = np.concatenate([entry[0] for entry in self._entries])
         columns = np.concatenate([entry[1] for entry in self._entries])
         values = np.concatenate([entry[2] for entry in self._entries])

@@ -2,14 +2,17 @@
 
 from math import isfinite
 
+import numpy as np
+
 from schemas.diagnosis import Diagnosis
 from schemas.job import CheckJob, Job, ScheduleJob
 from schemas.schedule import Schedule, Undecided, Violation
 from schemas.support import require_supported
 from workers.planning import answer
 from workers.planning.audit import Decision, Replay, replay
-from workers.planning.extraction import set_points
+from workers.planning.extraction import decision_of
 from workers.planning.instance import Instance, instance_of
+from workers.planning.joint import UnitPlan
 from workers.planning.limits import Limits, Unwatched, Watch
 from workers.planning.methods import Choice, Found, choose, solve
 from workers.planning.screening import Finding, screen
@@ -79,8 +82,8 @@ def _audited(job: ScheduleJob, choice: Choice, found: Found, limits: Limits, wat
 def _decisions(found: Found) -> dict[str, Decision]:
     decisions = {}
     for part, solution in zip(found.choice.parts, found.solutions, strict=True):
-        for store, power in zip(part.stores, solution.power_mw or (), strict=True):
-            decisions[store.id] = Decision(power_mw=set_points(store, power))
+        for unit, planned in zip(part.units, solution.plans or (), strict=True):
+            decisions[unit.id] = decision_of(part, unit, planned)
     return decisions
 
 
@@ -128,7 +131,7 @@ def _refused(job: ScheduleJob, findings: list[Finding]) -> Diagnosis:
 def _proven_infeasible(job: ScheduleJob, parts: list[Instance]) -> Diagnosis:
     """Name what is asked of the assets that cannot meet it."""
     conflicts = [_asked(job, part) for part in parts]
-    names = [", ".join(store.id for store in part.stores) for part in parts]
+    names = [", ".join(unit.id for unit in part.units) for part in parts]
     sentence = " ".join(
         f"No schedule of {who} meets all that is asked of it within its limits: {'; '.join(text for _, text in asked)}."
         for who, asked in zip(names, conflicts, strict=True)
@@ -137,12 +140,9 @@ def _proven_infeasible(job: ScheduleJob, parts: list[Instance]) -> Diagnosis:
 
 
 def _asked(job: ScheduleJob, part: Instance) -> list[tuple[str, str]]:
-    binding = {row.commitment: row for row in part.rows if row.shortfall_price_per_hour is None}
+    binding = {row.commitment: row for row in part.rows if row.price is None}
     commitments = [
-        (
-            row.pointer,
-            f"commitment {job.commitments[number].id}: {row.due_hours:g} h at {row.threshold_mw:g} MW or more",
-        )
+        (row.pointer, f"commitment {job.commitments[number].id} ({job.commitments[number].kind})")
         for number, row in sorted(binding.items())
     ]
     targets = [
@@ -157,11 +157,9 @@ def _undecided(job: ScheduleJob, found: Found, limits: Limits) -> Undecided:
     """Hand over what is proven, and the attempt in hand: planned where a plan was found, idle elsewhere."""
     decisions = {}
     for part, solution in zip(found.choice.parts, found.solutions, strict=True):
-        for number, store in enumerate(part.stores):
-            power = (
-                [0.0] * part.intervals if solution.power_mw is None else set_points(store, solution.power_mw[number])
-            )
-            decisions[store.id] = Decision(power_mw=power)
+        nothing = UnitPlan(np.zeros(part.intervals), None, {})
+        for unit, planned in zip(part.units, solution.plans or [nothing] * len(part.units), strict=True):
+            decisions[unit.id] = decision_of(part, unit, planned)
     bound = found.bound if isfinite(found.bound) else None
     attempt = answer.schedule(job, replay(job, decisions), "violated", bound, _effort(found.choice, found, limits))
     summary = f"{limits.seconds:g} s were not enough to find a schedule or to prove that there is none."
@@ -174,7 +172,11 @@ def _checked(job: CheckJob, limits: Limits) -> Schedule:
     decisions = {}
     for asset in job.schedule.assets:
         power = asset.power_mw if isinstance(asset.power_mw, list) else [asset.power_mw] * count
-        decisions[asset.id] = Decision(power_mw=power, on=asset.on)
+        reserve = {
+            product: held if isinstance(held, list) else [held] * count
+            for product, held in (asset.reserve_mw or {}).items()
+        }
+        decisions[asset.id] = Decision(power_mw=power, on=asset.on, reserve_mw=reserve)
     replayed = replay(job, decisions)
     return answer.schedule(
         job,

@@ -11,8 +11,9 @@ from datetime import datetime
 
 import numpy as np
 
-from workers.planning.instance import HoursRow, Instance, Meter
-from workers.planning.store import Floats, Store, whole_intervals
+from workers.planning.instance import Instance, Meter
+from workers.planning.rows import HoursRow, most_power
+from workers.planning.store import Store, whole_intervals
 
 SLACK_MWH = 1e-6
 SLACK_MW = 1e-6
@@ -32,7 +33,7 @@ def screen(instance: Instance) -> list[Finding]:
     for store in instance.stores:
         findings += _stored_energy(instance, store)
     for row in instance.rows:
-        if row.shortfall_price_per_hour is None:
+        if isinstance(row, HoursRow) and row.price is None:
             findings += _hours(instance, row)
     for meter in (*instance.meters, instance.fleet):
         findings += _connection(instance, meter)
@@ -82,10 +83,8 @@ def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
 
 
 def _words(row: HoursRow) -> str:
-    whom = f" of {row.asset}" if row.asset else ""
-    day = f" on {row.day}" if row.day else ""
     verb = "discharge" if row.sign > 0 else "charge"
-    return f"Commitment {row.id}{whom}{day}: {row.due_hours:g} h of {verb} at {row.threshold_mw:g} MW or more"
+    return f"Commitment {row.id}{row.where}: {row.due_hours:g} h of {verb} at {row.threshold_mw:g} MW or more"
 
 
 def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
@@ -94,28 +93,29 @@ def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
     if due <= 0:
         return
     member = (row.pointer, _words(row))
-    power = _most_power(instance, row)
+    power = most_power(instance.units, row)
     able = [t for t in row.intervals if t in row.excused or power[t] >= row.threshold_mw - SLACK_MW]
     counted = _in_blocks(able, row.min_block)
     if len(counted) < due:
         unit = f" in unbroken stretches of {row.min_block * instance.hours:g} h" if row.min_block > 1 else ""
         yield Finding(
-            (member, *_outages(instance, row.stores, row.intervals)),
+            (member, *_outages(instance, row.units, row.intervals)),
             f"{_words(row)} cannot fit: limits and outages allow it for at most "
             f"{len(counted) * instance.hours:g} h{unit} of the time that counts.",
         )
         return
-    if row.asset is not None and len(row.stores) == 1 and row.sign > 0:
-        yield from _energy_for_hours(instance, row, instance.stores[row.stores[0]], counted, due, member)
+    only = instance.units[row.units[0]] if row.asset is not None and row.units else None
+    if isinstance(only, Store) and row.sign > 0:
+        yield from _energy_for_hours(instance, row, only, counted, due, member)
 
 
-def _outages(instance: Instance, stores: Iterable[int], intervals: Iterable[int]) -> list[tuple[str, str]]:
-    """Name the outages of these stores that touch any of the intervals: what they leave is all there is."""
+def _outages(instance: Instance, units: Iterable[int], intervals: Iterable[int]) -> list[tuple[str, str]]:
+    """Name the outages of these units that touch any of the intervals: what they leave is all there is."""
     asked = set(intervals)
     return [
         (outage.pointer, outage.text)
-        for number in stores
-        for outage in instance.stores[number].outages
+        for number in units
+        for outage in instance.units[number].outages
         if asked.intersection(outage.intervals)
     ]
 
@@ -130,16 +130,6 @@ def _in_blocks(able: list[int], least: int) -> list[int]:
             stretch = []
         stretch.append(t)
     return kept
-
-
-def _most_power(instance: Instance, row: HoursRow) -> Floats:
-    most: Floats = -row.sign * row.load_mw
-    for number in row.stores:
-        store = instance.stores[number]
-        most = most + (
-            store.discharge_limit_mw * store.can_discharge if row.sign > 0 else store.charge_limit_mw * store.can_charge
-        )
-    return most
 
 
 def _energy_for_hours(
@@ -168,7 +158,7 @@ def _energy_for_hours(
         spare = store.initial_mwh - kept_back
         if needed > spare + charged + SLACK_MWH:
             yield Finding(
-                (*members, *_outages(instance, row.stores, range(until + 1))),
+                (*members, *_outages(instance, row.units, range(until + 1))),
                 f"{paid * hours:g} h at {row.threshold_mw:g} MW need {needed:g} MWh from {store.id} between "
                 f"{_clock(instance, counted[0])} and {_clock(instance, last + 1)}; {spare:g} MWh above {what} at the "
                 f"start and at most {charged:g} MWh charged by {_clock(instance, until + 1)} make at most "
@@ -180,15 +170,14 @@ def _energy_for_hours(
 def _connection(instance: Instance, meter: Meter) -> Iterator[Finding]:
     """Weigh what loads draw against what the connection and the stores behind it can bring."""
     discharge = np.zeros(instance.intervals)
-    for number in meter.stores:
-        store = instance.stores[number]
-        discharge = discharge + store.discharge_limit_mw * store.can_discharge
+    for number in meter.units:
+        discharge = discharge + instance.units[number].most_out_mw
     short = meter.load_mw - meter.import_limit_mw - discharge
     if (short > SLACK_MW).any():
         t = int(np.argmax(short))
         yield Finding(
             ((meter.pointer, f"import limit of {meter.id}"),),
             f"loads at {meter.id} draw {meter.load_mw[t]:g} MW at {_clock(instance, t)}; its import limit of "
-            f"{meter.import_limit_mw[t]:g} MW and its stores bring at most "
+            f"{meter.import_limit_mw[t]:g} MW and its plants bring at most "
             f"{meter.import_limit_mw[t] + discharge[t]:g} MW.",
         )

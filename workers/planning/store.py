@@ -2,21 +2,14 @@
 
 from dataclasses import dataclass
 from math import ceil, floor
-from zoneinfo import ZoneInfo
 
 import numpy as np
-from numpy.typing import NDArray
 
 from schemas.calendar import Calendar
 from schemas.fleet import Storage
-from schemas.job import OneWindow, Outage
+from schemas.job import OneWindow
 from workers.planning.availability import Availability
-
-Floats = NDArray[np.float64]
-Booleans = NDArray[np.bool_]
-
-IDLE_MW = 1e-6
-"""Up to this power counts as idle (contract, section 1)."""
+from workers.planning.units import IDLE_MW, Booleans, Floats, OutOfService, outages_of, products_of
 
 
 @dataclass(frozen=True)
@@ -25,15 +18,6 @@ class DayAllowance:
 
     intervals: range
     amount: float
-
-
-@dataclass(frozen=True)
-class OutOfService:
-    """An outage as the request lists it: its place there, in words, and the intervals it touches."""
-
-    pointer: str
-    text: str
-    intervals: range
 
 
 @dataclass(frozen=True)
@@ -73,6 +57,7 @@ class Store:
     direction_before: int
     held_intervals: int
     outages: tuple[OutOfService, ...] = ()
+    products: tuple[int, ...] = ()
 
     @property
     def can_discharge(self) -> Booleans:
@@ -87,6 +72,16 @@ class Store:
         limit = self.charge_limit_mw
         possible: Booleans = (limit > IDLE_MW) & (limit >= self.min_charge_mw - 1e-9)
         return possible
+
+    @property
+    def most_out_mw(self) -> Floats:
+        """Most that can be discharged, MW per interval."""
+        return self.discharge_limit_mw * self.can_discharge
+
+    @property
+    def most_in_mw(self) -> Floats:
+        """Most that can be charged, MW per interval."""
+        return self.charge_limit_mw * self.can_charge
 
     @property
     def has_states(self) -> bool:
@@ -163,22 +158,9 @@ def store_of(job: OneWindow, asset: Storage, calendar: Calendar, available: Avai
         min_rest=min_rest,
         direction_before=direction,
         held_intervals=_held(min_run if direction else min_rest, elapsed, hours),
-        outages=_outages(job, asset.id, calendar) if available is not None else (),
+        outages=outages_of(job, asset.id, calendar) if available is not None else (),
+        products=() if held_out else products_of(job, asset.reserve_products),
     )
-
-
-def _outages(job: OneWindow, asset: str, calendar: Calendar) -> tuple[OutOfService, ...]:
-    return tuple(
-        OutOfService(f"/outages/{number}", _outage_text(outage, calendar), calendar.touching(outage.from_, outage.to))
-        for number, outage in enumerate(job.outages)
-        if outage.asset == asset
-    )
-
-
-def _outage_text(outage: Outage, calendar: Calendar) -> str:
-    zone = ZoneInfo(calendar.timezone)
-    until = "further notice" if outage.to is None else f"{outage.to.astimezone(zone):%Y-%m-%d %H:%M}"
-    return f"{outage.kind} outage of {outage.asset} from {outage.from_.astimezone(zone):%Y-%m-%d %H:%M} until {until}"
 
 
 def _ceiling(asset: Storage) -> float:

@@ -1,25 +1,42 @@
-"""Net power stays within the connection, at every site and for the fleet.
+"""Net power stays within the connection, at every site and for the fleet, with the reserve that may be called.
 
-    -I[m,t]  <=  sum of (d - c)[a,t] over the meter's stores - L[m,t]  <=  X[m,t]      (1)
+    sum of power[a,t] + sum of up[a,t] - L[m,t]    <=  X[m,t]                          (1)
+    sum of power[a,t] - sum of down[a,t] - L[m,t]  >=  -I[m,t]                         (2)
 
-X,I  export and import limit, MW; L  what fixed and standby loads draw there, MW
+X,I  export and import limit, MW; L  what fixed and standby loads draw there, MW; up,down  reserve held behind the meter
+
+Where both limits are 0 the meter is an island: its reserve serves its own load and is not counted.
 """
 
 import numpy as np
 
 from workers.planning.instance import Meter
-from workers.planning.model import Model
-from workers.planning.rules.columns import FleetColumns
+from workers.planning.model import INFINITE, Model
+from workers.planning.rules.columns import FleetColumns, Net
+from workers.planning.units import Floats
 
 
 def add(model: Model, columns: FleetColumns, meter: Meter) -> None:
-    """Add (1) in the intervals in which the meter has a limit that its stores and loads can reach."""
-    terms = columns.net(meter.stores)
-    limited = np.isfinite(meter.export_limit_mw) | np.isfinite(meter.import_limit_mw)
-    where = np.flatnonzero(limited)
+    """Add (1) and (2) in the intervals in which the meter has a limit."""
+    lower, upper = meter.load_mw - meter.import_limit_mw, meter.load_mw + meter.export_limit_mw
+    net = columns.net(meter.units)
+    up, down = columns.held(meter.units, up=True), columns.held(meter.units, up=False)
+    with_up, with_down = ~meter.is_islanded & bool(up), ~meter.is_islanded & bool(down)
+    _rows(model, [*net, *up], np.full_like(upper, -INFINITE), np.where(with_up, upper, INFINITE))
+    _rows(
+        model,
+        [*net, *((held, -1.0) for held, _ in down)],
+        np.where(with_down, lower, -INFINITE),
+        np.full_like(lower, INFINITE),
+    )
+    _rows(model, net, np.where(with_down, -INFINITE, lower), np.where(with_up, INFINITE, upper))
+
+
+def _rows(model: Model, terms: Net, lower: Floats, upper: Floats) -> None:
+    """Add the rows that limit anything."""
+    where = np.flatnonzero(np.isfinite(lower) | np.isfinite(upper))
     if len(where) == 0:
         return
-    lower, upper = meter.load_mw - meter.import_limit_mw, meter.load_mw + meter.export_limit_mw
     if not terms:
         nothing = model.columns(len(where), 0.0, 0.0)
         model.rows(lower[where], upper[where], (nothing, 1.0))

@@ -13,5 +13,5 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns, hours: float) -> None:
     """Add (1) for each local day of the window."""
-    for allowance in columns.store.discharge_allowances:
+    for allowance in columns.unit.discharge_allowances:
         model.row(-INFINITE, allowance.amount, (columns.discharge[np.array(allowance.intervals)], hours))

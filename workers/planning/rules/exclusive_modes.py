@@ -30,7 +30,7 @@ class Modes:
 
 def add(model: Model, columns: StoreColumns, where: NDArray[np.bool_]) -> Modes:
     """Add (1) and (2) in the chosen intervals; a store with on-off columns has them by its minimum powers."""
-    store = columns.store
+    store = columns.unit
     chosen = np.flatnonzero(where & store.can_charge & store.can_discharge)
     if columns.states is not None:
         chosen = chosen[:0]

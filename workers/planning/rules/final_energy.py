@@ -12,7 +12,7 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns) -> None:
     """Add the final target and the value of what is left above it."""
-    store, last = columns.store, columns.stored[-1:]
+    store, last = columns.unit, columns.stored[-1:]
     model.rows(store.final_floor_mwh, INFINITE, (last, 1.0))
     if store.final_value_per_mwh:
         model.earn(last, store.final_value_per_mwh)

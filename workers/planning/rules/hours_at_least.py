@@ -1,6 +1,6 @@
 """At least so many hours with power at or above a threshold.
 
-    sign * (sum of (d - c)[a,t] - L[t])  >=  theta * y[t] - M[t] * (1 - y[t])          (1)
+    sign * (sum of power[a,t] - L[t])  >=  theta * y[t] - M[t] * (1 - y[t])          (1)
     sum of h*y[t] over the row + shortfall  >=  hours due                              (2)
     b[t] >= y[t] - y[t-1],  sum of b[k], k = t-B+1 .. t  <=  y[t]                      (3)
 
@@ -17,10 +17,11 @@ from itertools import pairwise
 
 import numpy as np
 
-from workers.planning.instance import HoursRow
 from workers.planning.model import INFINITE, Columns, Model
+from workers.planning.rows import HoursRow, most_against, most_power
 from workers.planning.rules.columns import FleetColumns, StoreColumns
-from workers.planning.store import Booleans, Floats, whole_intervals
+from workers.planning.store import whole_intervals
+from workers.planning.units import Booleans
 
 
 def add(model: Model, columns: FleetColumns, row: HoursRow) -> None:
@@ -30,52 +31,38 @@ def add(model: Model, columns: FleetColumns, row: HoursRow) -> None:
     excused = np.isin(where, list(row.excused))
     counted = model.binaries(excused | _within_reach(columns, row)[where])
     asked = np.flatnonzero(~excused)
-    if row.asset is not None and len(row.stores) == 1:
-        _one_store(model, columns.stores[row.stores[0]], row, counted[asked], where[asked])
-    elif row.stores:
+    only = columns.units[row.units[0]] if row.asset is not None and row.units else None
+    if isinstance(only, StoreColumns):
+        _one_store(model, only, row, counted[asked], where[asked])
+    elif row.units:
         _net_sum(model, columns, row, counted[asked], where[asked])
     if row.min_block > 1:
         _blocks(model, row, counted, where)
-    if row.shortfall_price_per_hour is None:
+    if row.price is None:
         model.row(whole_intervals(row.due_hours, hours), INFINITE, (counted, 1.0))
         return
     shortfall = model.columns(1, 0.0, max(row.due_hours, 0.0))
-    model.earn(shortfall, -row.shortfall_price_per_hour)
+    model.earn(shortfall, -row.price)
     model.row(row.due_hours, INFINITE, (counted, hours), (shortfall, 1.0))
 
 
 def _within_reach(columns: FleetColumns, row: HoursRow) -> Booleans:
     """Find the intervals in which the members' limits allow the threshold at all."""
-    reachable: Booleans = most_power(columns, row) >= row.threshold_mw - 1e-6
+    reachable: Booleans = most_power(columns.instance.units, row) >= row.threshold_mw - 1e-6
     return reachable
-
-
-def most_power(columns: FleetColumns, row: HoursRow) -> Floats:
-    """Give the most power in the row's direction that limits allow, MW per interval."""
-    most: Floats = -row.sign * row.load_mw
-    for number in row.stores:
-        store = columns.stores[number].store
-        if row.sign > 0:
-            most = most + store.discharge_limit_mw * store.can_discharge
-        else:
-            most = most + store.charge_limit_mw * store.can_charge
-    return most
 
 
 def _one_store(model: Model, store: StoreColumns, row: HoursRow, counted: Columns, where: Columns) -> None:
     forward, backward = (store.discharge, store.charge) if row.sign > 0 else (store.charge, store.discharge)
-    other = store.store.charge_limit_mw if row.sign > 0 else store.store.discharge_limit_mw
+    other = store.unit.charge_limit_mw if row.sign > 0 else store.unit.discharge_limit_mw
     model.rows(0.0, INFINITE, (forward[where], 1.0), (counted, -row.threshold_mw))
     model.rows(-INFINITE, other[where], (backward[where], 1.0), (counted, other[where]))
 
 
 def _net_sum(model: Model, columns: FleetColumns, row: HoursRow, counted: Columns, where: Columns) -> None:
-    backward = row.sign * row.load_mw
-    for number in row.stores:
-        store = columns.stores[number].store
-        backward = backward + (store.charge_limit_mw if row.sign > 0 else store.discharge_limit_mw)
-    span = np.maximum(row.threshold_mw + backward[where], 0.0)
-    terms = [(part[where], row.sign * factor) for part, factor in columns.net(row.stores)]
+    backward = most_against(columns.instance.units, row)[where]
+    span = np.maximum(row.threshold_mw + backward, 0.0)
+    terms = [(part[where], row.sign * factor) for part, factor in columns.net(row.units)]
     lower = row.threshold_mw - span + row.sign * row.load_mw[where]
     model.rows(lower, INFINITE, *terms, (counted, -span))
 

@@ -1,6 +1,6 @@
 """What flows out of and into a meter, around a level, as two columns.
 
-    sum of (d - c)[a,t] - L[t] - level[t] = x[t] - m[t],   x, m >= 0                   (1)
+    sum of power[a,t] - L[t] - level[t] = x[t] - m[t],   x, m >= 0                   (1)
     x[t] <= X[t] * z[t],  m[t] <= M[t] * (1 - z[t])        where both at once would pay (2)
 
 x,m  MW above and below the level; L  what loads draw; X,M  the most either can be; z  1 where above
@@ -32,14 +32,13 @@ def add(
     """Add (1), and (2) where `exclusive`."""
     count = len(level)
     most, least = -meter.load_mw - level, -meter.load_mw - level
-    for number in meter.stores:
-        store = columns.stores[number].store
-        most = most + store.discharge_limit_mw
-        least = least - store.charge_limit_mw
+    for number in meter.units:
+        unit = columns.instance.units[number]
+        most, least = most + unit.most_out_mw, least - unit.most_in_mw
     above = model.columns(count, 0.0, np.maximum(most, 0.0))
     below = model.columns(count, 0.0, np.maximum(-least, 0.0))
     drawn = meter.load_mw + level
-    model.rows(drawn, drawn, *columns.net(meter.stores), (above, -1.0), (below, 1.0))
+    model.rows(drawn, drawn, *columns.net(meter.units), (above, -1.0), (below, 1.0))
     where = np.flatnonzero(exclusive & (most > 0) & (least < 0))
     if len(where):
         is_above = model.columns(len(where), 0.0, 1.0, integer=True)

@@ -16,7 +16,7 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns) -> None:
     """Tie the on-off columns of a store to its powers; nothing for a store without them."""
-    store, states = columns.store, columns.states
+    store, states = columns.unit, columns.states
     if states is None:
         return
     _tie(model, columns.discharge, states.discharging, store.min_discharge_mw, store.discharge_limit_mw)

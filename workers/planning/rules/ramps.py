@@ -15,7 +15,7 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns) -> None:
     """Add the ramp of one store; nothing without one."""
-    store = columns.store
+    store = columns.unit
     if store.ramp_mw is None:
         return
     step, before = store.ramp_mw, store.power_before_mw

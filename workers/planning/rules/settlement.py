@@ -50,7 +50,7 @@ def _settle(model: Model, columns: FleetColumns, meter: Meter, *, with_fees: boo
 
 def _one_price(model: Model, columns: FleetColumns, meter: Meter, instance: Instance) -> None:
     money = instance.hours * instance.sell
-    for part, factor in columns.net(meter.stores):
+    for part, factor in columns.net(meter.units):
         model.earn(part, money * factor)
     model.constant -= float(money @ (meter.load_mw + meter.position_mw))
 
@@ -66,4 +66,4 @@ def _peak(model: Model, columns: FleetColumns, meter: Meter) -> None:
     peak = model.columns(1, 0.0, INFINITE)
     model.earn(peak, -meter.peak_import_charge_per_mw)
     everywhere = np.repeat(peak, columns.instance.intervals)
-    model.rows(meter.load_mw - meter.peak_so_far_mw, INFINITE, *columns.net(meter.stores), (everywhere, 1.0))
+    model.rows(meter.load_mw - meter.peak_so_far_mw, INFINITE, *columns.net(meter.units), (everywhere, 1.0))

@@ -16,7 +16,7 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns, hours: float) -> None:
     """Add the energy balance (1) of one store."""
-    store, stored = columns.store, columns.stored
+    store, stored = columns.unit, columns.stored
     into, out_of = -hours * store.charge_efficiency, hours / store.discharge_efficiency
     start = store.initial_mwh * store.kept
     model.rows(start, start, (stored[:1], 1.0), (columns.charge[:1], into), (columns.discharge[:1], out_of))

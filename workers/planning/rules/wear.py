@@ -11,5 +11,5 @@ from workers.planning.rules.columns import StoreColumns
 
 def add(model: Model, columns: StoreColumns, hours: float) -> None:
     """Add the wear cost of one store."""
-    if columns.store.wear_cost_per_mwh:
-        model.earn(columns.discharge, -hours * columns.store.wear_cost_per_mwh)
+    if columns.unit.wear_cost_per_mwh:
+        model.earn(columns.discharge, -hours * columns.unit.wear_cost_per_mwh)
