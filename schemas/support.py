@@ -11,7 +11,7 @@ from schemas.problems import Fault, Unsupported, pointer
 from schemas.window import Window
 
 UNSUPPORTED_TASKS = {"commitment_costs", "reschedule", "sequence"}
-UNSUPPORTED_METHODS = {"cp_sat", "coordinated"}
+UNSUPPORTED_METHODS = {"coordinated"}
 UNSUPPORTED_ASSET_KINDS = {"generator", "renewable", "flexible_load"}
 UNSUPPORTED_COMMITMENT_KINDS = {
     "hours_at_most",

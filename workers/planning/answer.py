@@ -3,6 +3,7 @@
 import hashlib
 from collections.abc import Iterable
 from dataclasses import dataclass
+from functools import cache
 from importlib.metadata import version
 
 from pydantic import TypeAdapter
@@ -40,13 +41,18 @@ def provenance(job: Job, effort: Effort) -> Provenance:
     """Say from which request, by which versions and with what effort an answer was made."""
     return Provenance(
         request_sha256=hashlib.sha256(canonical(job)).hexdigest(),
-        versions={name: version(name) for name in LIBRARIES},
+        versions=dict(_versions()),
         seed=job.seed,
         threads=effort.threads,
         why_method=effort.why,
         solver_seconds=round(effort.solver_seconds, 6),
         build_seconds=round(effort.build_seconds, 6),
     )
+
+
+@cache
+def _versions() -> tuple[tuple[str, str], ...]:
+    return tuple((name, version(name)) for name in LIBRARIES)
 
 
 def schedule(job: PlannedJob, replayed: Replay, outcome: Outcome, bound: float | None, effort: Effort) -> Schedule:

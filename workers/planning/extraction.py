@@ -5,9 +5,9 @@ Stored energy and money are not taken over: the audit recomputes them from the s
 
 import numpy as np
 
+from workers.planning.assembly import UnitPlan
 from workers.planning.audit import Decision
 from workers.planning.instance import Instance
-from workers.planning.joint import UnitPlan
 from workers.planning.units import Floats, Unit
 
 NOISE_MW = 1e-8

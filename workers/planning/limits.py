@@ -42,7 +42,11 @@ class Limits:
 
 
 class Watch(Protocol):
-    """Who is told how far a plan has come, and may ask it to stop."""
+    """Who is told how far a plan has come, and may ask it to stop; whether it ever will is `is_stoppable`."""
+
+    @property
+    def is_stoppable(self) -> bool:
+        """Tell whether `solving` is worth its price: a solver that can be cancelled calls back all the time."""
 
     def progress(self, phase: str, done: float) -> None:
         """Take note of a phase and the share of it that is done, 0 to 1."""
@@ -56,6 +60,8 @@ class Watch(Protocol):
 
 class Unwatched:
     """Nobody watches."""
+
+    is_stoppable = False
 
     def progress(self, phase: str, done: float) -> None:
         """Let it pass."""
@@ -71,6 +77,8 @@ class Unwatched:
 
 class StoppableWatch(Unwatched):
     """Lets another thread stop a plan: running solves are cancelled, new ones are not begun."""
+
+    is_stoppable = True
 
     def __init__(self) -> None:
         self._lock = Lock()

@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 from math import inf
 
 from workers.planning.instance import Instance
-from workers.planning.joint import Solution, is_within_gap, solve_jointly
+from workers.planning.joint import Solution, is_within_gap, solve_by_cp_sat, solve_jointly
 from workers.planning.limits import Limits, Watch
 from workers.planning.parts import independent_parts
 from workers.planning.solvers.ending import Stopped
@@ -55,6 +55,8 @@ def choose(instance: Instance, asked: str) -> Choice:
     """Choose parts and method from the request alone."""
     parts = tuple(independent_parts(instance))
     alone = all(len(part.units) <= 1 for part in parts)
+    if asked == "cp_sat":
+        return Choice("cp_sat", parts, f"asked for by name: {_counted(parts)}")
     if asked == "milp":
         if alone:
             return Choice("milp", (instance,), "asked for by name: one joint model")
@@ -82,9 +84,7 @@ def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: b
         waiting = len(choice.parts) - len(solutions)
         share = limits.left_to_solve() * limits.threads / waiting
         seconds = min(limits.left_to_solve(), LONGEST_SHARE * share)
-        solutions[number] = solve_jointly(
-            choice.parts[number], limits, watch, seed=seed, seconds=seconds, everywhere=careful
-        )
+        solutions[number] = _one_part(choice, number, limits, watch, seed=seed, seconds=seconds, careful=careful)
         watch.progress("solving", len(solutions) / len(choice.parts))
 
     if limits.threads == 1 or len(choice.parts) == 1:
@@ -96,6 +96,20 @@ def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: b
                 pass
     found = Found(choice, tuple(solutions[number] for number in range(len(choice.parts))))
     return _closed(found, limits, watch, seed)
+
+
+def _one_part(
+    choice: Choice, number: int, limits: Limits, watch: Watch, *, seed: int, seconds: float, careful: bool
+) -> Solution:
+    """Solve one part by the method chosen; what CP-SAT leaves without exact powers goes to the joint model."""
+    part = choice.parts[number]
+    if choice.method == "cp_sat" and not careful:
+        ends = limits.clock() + seconds
+        found = solve_by_cp_sat(part, limits, watch, seed=seed, seconds=seconds)
+        if found.plans is not None or found.stopped is not Stopped.WITHIN_GAP:
+            return found
+        return _better(found, solve_jointly(part, limits, watch, seed=seed, seconds=ends - limits.clock()))
+    return solve_jointly(part, limits, watch, seed=seed, seconds=seconds, everywhere=careful)
 
 
 def _over(solutions: dict[int, Solution], limits: Limits, watch: Watch) -> Callable[[], bool]:
@@ -146,7 +160,8 @@ def _second_look(found: Found, limits: Limits, watch: Watch, seed: int, gap: flo
 
 def _better(first: Solution, second: Solution) -> Solution:
     """Keep the better schedule and the tighter bound of two solves of the same part."""
-    kept = first if second.margin is None or (first.margin or -inf) >= second.margin else second
+    worse = second.margin is None or (first.margin is not None and first.margin >= second.margin)
+    kept = first if worse else second
     return replace(
         kept,
         bound=min(first.bound, second.bound),

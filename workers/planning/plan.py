@@ -9,10 +9,10 @@ from schemas.job import CheckJob, Job, ScheduleJob
 from schemas.schedule import Schedule, Undecided, Violation
 from schemas.support import require_supported
 from workers.planning import answer
+from workers.planning.assembly import UnitPlan
 from workers.planning.audit import Decision, Replay, replay
 from workers.planning.extraction import decision_of
 from workers.planning.instance import Instance, instance_of
-from workers.planning.joint import UnitPlan
 from workers.planning.limits import Limits, Unwatched, Watch
 from workers.planning.methods import Choice, Found, choose, solve
 from workers.planning.screening import Finding, screen

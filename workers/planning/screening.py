@@ -57,22 +57,19 @@ def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
     into = hours * store.charge_efficiency * store.charge_limit_mw * store.can_charge
     out_of = hours / store.discharge_efficiency * store.discharge_limit_mw * store.can_discharge
     most = least = store.initial_mwh
-    for t in range(instance.intervals):
-        most = min(most * store.kept + into[t], store.ceiling_mwh[t])
-        least = max(least * store.kept - out_of[t], store.floor_mwh[t])
-        when = _clock(instance, t + 1)
-        if most < store.floor_mwh[t] - SLACK_MWH:
-            yield Finding(
-                ((f"/initial/{store.id}", f"{store.initial_mwh:g} MWh stored at the start"),),
-                f"{store.id} must hold {store.floor_mwh[t]:g} MWh at {when}; at most {most:g} MWh can be there.",
-            )
-            return
-        if least > store.ceiling_mwh[t] + SLACK_MWH:
-            yield Finding(
-                ((f"/initial/{store.id}", f"{store.initial_mwh:g} MWh stored at the start"),),
-                f"{store.id} may hold {store.ceiling_mwh[t]:g} MWh at {when}; at least {least:g} MWh must be there.",
-            )
-            return
+    limits = zip(into.tolist(), out_of.tolist(), store.floor_mwh.tolist(), store.ceiling_mwh.tolist(), strict=True)
+    for t, (charged, discharged, floor, ceiling) in enumerate(limits):
+        most = min(most * store.kept + charged, ceiling)
+        least = max(least * store.kept - discharged, floor)
+        if most < floor - SLACK_MWH:
+            what = f"must hold {floor:g} MWh at {_clock(instance, t + 1)}; at most {most:g} MWh can be there"
+        elif least > ceiling + SLACK_MWH:
+            what = f"may hold {ceiling:g} MWh at {_clock(instance, t + 1)}; at least {least:g} MWh must be there"
+        else:
+            continue
+        start = (f"/initial/{store.id}", f"{store.initial_mwh:g} MWh stored at the start")
+        yield Finding((start,), f"{store.id} {what}.")
+        return
     if most < store.final_floor_mwh - SLACK_MWH:
         target = (f"/targets/{store.id}/final_stored_mwh", f"at least {store.final_floor_mwh:g} MWh at the end")
         yield Finding(

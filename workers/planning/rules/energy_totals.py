@@ -12,7 +12,7 @@ P,M  the most that can flow in it, and against it, MW
 
 import numpy as np
 
-from workers.planning.model import INFINITE, Model
+from workers.planning.model import INFINITE, Columns, Model
 from workers.planning.rows import EnergyRow, most_against, most_power
 from workers.planning.rules.columns import FleetColumns
 
@@ -32,14 +32,14 @@ def add(model: Model, columns: FleetColumns, row: EnergyRow) -> None:
         model.rows(-INFINITE, 0.0, (flow, 1.0), (forward, -most))
     else:
         model.rows(-INFINITE, load, *terms, (flow, -1.0))
-    _total(model, row, [(flow, hours)])
+    _total(model, row, (flow, hours), hours * float(most.sum()))
 
 
-def _total(model: Model, row: EnergyRow, energy: list[tuple[np.ndarray, float]]) -> None:
+def _total(model: Model, row: EnergyRow, energy: tuple[Columns, float], most_mwh: float) -> None:
     lower, upper = (row.energy_mwh, INFINITE) if row.at_least else (-INFINITE, row.energy_mwh)
     if row.price is None:
-        model.row(lower, upper, *energy)
+        model.row(lower, upper, energy)
         return
-    slack = model.columns(1, 0.0, INFINITE)
+    slack = model.columns(1, 0.0, max(row.energy_mwh, 0.0) if row.at_least else most_mwh + max(-row.energy_mwh, 0.0))
     model.earn(slack, -row.price)
-    model.row(lower, upper, *energy, (slack, 1.0 if row.at_least else -1.0))
+    model.row(lower, upper, energy, (slack, 1.0 if row.at_least else -1.0))

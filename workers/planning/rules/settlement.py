@@ -63,7 +63,8 @@ def _fees(model: Model, columns: FleetColumns, meter: Meter) -> None:
 
 
 def _peak(model: Model, columns: FleetColumns, meter: Meter) -> None:
-    peak = model.columns(1, 0.0, INFINITE)
+    drawn = meter.load_mw + sum(columns.instance.units[number].most_in_mw for number in meter.units)
+    peak = model.columns(1, 0.0, max(0.0, float(np.max(drawn)) - meter.peak_so_far_mw))
     model.earn(peak, -meter.peak_import_charge_per_mw)
     everywhere = np.repeat(peak, columns.instance.intervals)
     model.rows(meter.load_mw - meter.peak_so_far_mw, INFINITE, *columns.net(meter.units), (everywhere, 1.0))

@@ -107,7 +107,8 @@ def solve(matrix: Matrix, effort: Effort, watch: Watch, start: NDArray[np.float6
         point = highspy.HighsSolution()
         point.col_value = start
         solver.setSolution(point)
-    solver.HandleUserInterrupt = True
+    if watch.is_stoppable:
+        solver.HandleUserInterrupt = True
     with watch.solving(solver.cancelSolve):
         _run(solver)
         if solver.getModelStatus() == Status.kUnboundedOrInfeasible:
