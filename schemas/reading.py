@@ -16,7 +16,7 @@ from schemas.json_text import read_json
 from schemas.places import place_of
 from schemas.problems import Fault, InvalidRequest, pointer
 
-__all__ = ["read_job", "read_json"]
+__all__ = ["canonical", "read_job", "read_json"]
 
 MOST_FAULTS_KEPT = 1_000
 # Documents within documents count the same fault once each, four levels at most.
@@ -45,6 +45,11 @@ def read_job(document: object) -> Job:
 @cache
 def _contract() -> TypeAdapter[Job]:
     return TypeAdapter(Job)
+
+
+def canonical(job: Job) -> bytes:
+    """Write a job as it was accepted: members by their names on the wire, absent ones and defaults left out."""
+    return _contract().dump_json(job, by_alias=True, exclude_none=True, exclude_unset=True)
 
 
 def _faults_across_the_rest(document: object, errors: list[ErrorDetails]) -> Iterator[Fault]:

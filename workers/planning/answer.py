@@ -6,12 +6,11 @@ from dataclasses import dataclass
 from functools import cache
 from importlib.metadata import version
 
-from pydantic import TypeAdapter
-
 from schemas.assumptions import assumptions
 from schemas.cautions import CAUTIONS
 from schemas.diagnosis import Conflict, Diagnosis, Member
 from schemas.job import CheckJob, Job, ScheduleJob
+from schemas.reading import canonical
 from schemas.schedule import Outcome, Provenance, Schedule, Undecided
 from workers.planning.audit import Replay
 
@@ -30,11 +29,6 @@ class Effort:
     threads: int
     solver_seconds: float = 0.0
     build_seconds: float = 0.0
-
-
-def canonical(job: Job) -> bytes:
-    """Write a job as the service accepted it: members by their names on the wire, absent ones left out."""
-    return TypeAdapter[Job](Job).dump_json(job, by_alias=True, exclude_none=True)
 
 
 def provenance(job: Job, effort: Effort) -> Provenance:

@@ -39,7 +39,7 @@ def _keep(document: dict[str, Any], name: str, what: str) -> str:
     return f"{what}; stored as tests/instances/{path.name}"
 
 
-def _disagreement(document: dict[str, Any], found: Any, oracle: Answer) -> str | None:
+def _disagreement(found: Any, oracle: Answer) -> str | None:
     """Say in what the planner and the oracle differ; None where they agree within their gaps."""
     if isinstance(found, Diagnosis):
         return None if oracle.outcome == "infeasible" else f"infeasible ({found.summary}), oracle {oracle}"
@@ -59,7 +59,7 @@ def _agrees(seed: int, *, coupled: bool) -> str:
     """Compare planner and oracle on one request; return the outcome both came to."""
     document = _asked(seed, coupled=coupled)
     found = answer(document)
-    wrong = _disagreement(document, found, solve(document, gap=GAP, time_limit=120))
+    wrong = _disagreement(found, solve(document, gap=GAP, time_limit=120))
     assert wrong is None, _keep(document, f"{'coupled' if coupled else 'uncoupled'}-{seed}", f"seed {seed}: {wrong}")
     return str(found.outcome)
 
@@ -137,7 +137,7 @@ def test_every_binary_from_the_start_gives_the_same_margin() -> None:
 def test_stored_requests_that_failed_once_agree_now() -> None:
     for path in sorted(STORED.glob("*.json")):
         document = json.loads(path.read_text())
-        wrong = _disagreement(document, answer(document), solve(document, gap=GAP, time_limit=120))
+        wrong = _disagreement(answer(document), solve(document, gap=GAP, time_limit=120))
         assert wrong is None, f"{path.name}: {wrong}"
 
 

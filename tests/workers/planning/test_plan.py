@@ -6,10 +6,9 @@ from typing import Any
 import pytest
 
 from schemas.problems import InvalidRequest, Unsupported
-from schemas.reading import read_job
+from schemas.reading import canonical, read_job
 from schemas.schedule import Schedule, Undecided
 from tests.workers.planning.jobs import NOW, answer, hours, indexed, job, planned, power_of, refused, store
-from workers.planning.answer import canonical
 from workers.planning.limits import Limits, StoppableWatch
 from workers.planning.plan import plan
 

@@ -1,0 +1,1 @@
+"""What breaks on a real machine: real processes, a real Redis, real signals."""
