@@ -9,8 +9,8 @@ import pytest
 from scipy.sparse import csr_matrix
 
 from tests.workers.planning.jobs import indexed, job, store
+from workers.planning.assembly import assemble
 from workers.planning.instance import instance_of
-from workers.planning.joint import assemble
 from workers.planning.limits import StoppableWatch, Unwatched
 from workers.planning.model import Model
 from workers.planning.solvers import highs

@@ -18,6 +18,7 @@ from workers.planning import instance as indexing
 from workers.planning import joint, plan
 from workers.planning.instance import Instance
 from workers.planning.plan import PlanningError
+from workers.planning.rows import HoursRow
 from workers.planning.rules import (
     connection_limits,
     daily_cycles,
@@ -47,7 +48,7 @@ def with_stores(change: Callable[[Store], Store]) -> Callable[[OneWindow], Insta
 
     def faulty(read: OneWindow) -> Instance:
         found = true_index(read)
-        return replace(found, stores=tuple(change(entry) for entry in found.stores))
+        return replace(found, units=tuple(change(entry) for entry in found.stores))
 
     return faulty
 
@@ -161,6 +162,11 @@ PROMISED = two_stores(sites=[{"id": "quay"}]) | {
     "window": two_stores()["window"] | {"price_per_mwh": [-10.0, 20.0]},
 }
 
+
+def with_rows(found: Instance, change: Callable[[HoursRow], HoursRow]) -> Instance:
+    return replace(found, rows=tuple(change(row) if isinstance(row, HoursRow) else row for row in found.rows))
+
+
 FAULTS_IN_METERS: dict[str, tuple[Callable[[Instance], Instance], Document]] = {
     "a site limit dropped": (
         lambda i: replace(i, meters=tuple(replace(m, export_limit_mw=m.export_limit_mw + np.inf) for m in i.meters)),
@@ -173,15 +179,15 @@ FAULTS_IN_METERS: dict[str, tuple[Callable[[Instance], Instance], Document]] = {
         | {"initial": {"quay-b1": {"stored_mwh": 0.0}, "quay-b2": {"stored_mwh": 0.0}}},
     ),
     "a commitment one interval short": (
-        lambda i: replace(i, rows=tuple(replace(r, due_hours=r.due_hours - i.hours) for r in i.rows)),
+        lambda i: with_rows(i, lambda r: replace(r, due_hours=r.due_hours - i.hours)),
         PROMISED,
     ),
     "a commitment without its headroom": (
-        lambda i: replace(i, rows=tuple(replace(r, threshold_mw=r.threshold_mw - 0.25) for r in i.rows)),
+        lambda i: with_rows(i, lambda r: replace(r, threshold_mw=r.threshold_mw - 0.25)),
         PROMISED,
     ),
     "a commitment counted in the wrong hours": (
-        lambda i: replace(i, rows=tuple(replace(r, intervals=(1,), due_hours=1.0) for r in i.rows)),
+        lambda i: with_rows(i, lambda r: replace(r, intervals=(1,), due_hours=1.0)),
         PROMISED | {"commitments": [hours({"site": "quay"}, 1, 1.0, to="2027-02-09T01:00:00Z")]},
     ),
     "prices shifted by an interval": (
@@ -249,7 +255,7 @@ def test_modes_left_mixed_are_caught(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(
         exclusive_modes, "add", lambda model, columns, where: true_add(model, columns, np.zeros_like(where))
     )
-    monkeypatch.setattr(joint, "_mixed", lambda columns, _: [np.zeros(1, dtype=bool) for _ in columns.stores])
+    monkeypatch.setattr(joint, "mixed_modes", lambda columns, _: [np.zeros(1, dtype=bool) for _ in columns.stores])
     caught(trap)
 
 

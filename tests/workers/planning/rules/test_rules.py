@@ -291,7 +291,7 @@ def test_a_peak_is_paid_above_what_the_month_already_had() -> None:
 
 def test_a_commitment_is_met_exactly_and_costs_what_it_displaces() -> None:
     # 1 MWh earns 50 in hour 2; half of it has to go in hour 1 at 10.
-    promise = hours(QUAY, 1, 0.5, **{"to": at(1)})
+    promise = hours(QUAY, 1, 0.5, to=at(1))
     found = planned(job([10.0, 50.0], store(charge_limit_mw=0.0), stored=1.0, commitments=[promise]))
     assert power_of(found, "quay-b1") == pytest.approx([0.5, 0.5])
     assert (found.commitments[0].required_hours, found.commitments[0].delivered_hours) == (1.0, 1.0)
@@ -299,7 +299,7 @@ def test_a_commitment_is_met_exactly_and_costs_what_it_displaces() -> None:
 
 
 def test_headroom_is_delivered_but_counted_at_the_threshold() -> None:
-    promise = hours(QUAY, 1, 0.5, headroom_mw=0.25, **{"to": at(1)})
+    promise = hours(QUAY, 1, 0.5, headroom_mw=0.25, to=at(1))
     found = planned(job([10.0, 50.0], store(), stored=1.0, commitments=[promise]))
     assert power_of(found, "quay-b1")[0] == pytest.approx(0.75)
 
@@ -307,7 +307,7 @@ def test_headroom_is_delivered_but_counted_at_the_threshold() -> None:
 @pytest.mark.parametrize(("price", "met"), [(19.0, False), (21.0, True)])
 def test_a_priced_commitment_is_met_when_that_is_cheaper(price: float, met: bool) -> None:
     # Meeting it displaces 0.5 MWh from 50 to 10: 20.
-    promise = hours(QUAY, 1, 0.5, shortfall_price_per_hour=price, **{"to": at(1)})
+    promise = hours(QUAY, 1, 0.5, shortfall_price_per_hour=price, to=at(1))
     found = planned(job([10.0, 50.0], store(charge_limit_mw=0.0), stored=1.0, commitments=[promise]))
     assert found.commitments[0].met is met
     assert found.totals.shortfall_cost == pytest.approx(0.0 if met else price)
@@ -366,7 +366,7 @@ def test_a_sum_is_met_by_several_stores_net_of_what_their_meter_draws(whom: dict
 def test_a_sum_counts_charging_against_it() -> None:
     # One store has energy, the other must end full: in the committed hour it may not charge.
     pair = [on_site(charge_limit_mw=0.0), on_site("quay-b2", discharge_limit_mw=0.0)]
-    promise = hours({"site": "quay"}, 1, 1.0, **{"to": at(1)})
+    promise = hours({"site": "quay"}, 1, 1.0, to=at(1))
     document = job([10.0, 30.0], *pair, sites=[SITE], commitments=[promise])
     document["initial"] = {"quay-b1": {"stored_mwh": 1.0}, "quay-b2": {"stored_mwh": 0.0}}
     document["targets"] = {"quay-b1": {"final_stored_mwh": 0.0}, "quay-b2": {"final_stored_mwh": 1.0}}
