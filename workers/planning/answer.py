@@ -17,7 +17,7 @@ from workers.planning.audit import Replay
 PlannedJob = ScheduleJob | CheckJob
 """The tasks that are planned so far; all on one window."""
 
-LIBRARIES = ("hourwright", "highspy", "pyomo")
+LIBRARIES = ("hourwright", "highspy", "ortools", "pyomo")
 
 
 @dataclass(frozen=True)

@@ -40,6 +40,14 @@ class Found:
         return sum(solution.bound for solution in self.solutions)
 
     @property
+    def why(self) -> str:
+        """Why the method was taken, and where it had to fall back on another."""
+        fallen = sum(solution.fell_back for solution in self.solutions)
+        if not fallen:
+            return self.choice.why
+        return f"{self.choice.why}; {fallen} of them by milp: no exact powers for CP-SAT's choice over whole steps"
+
+    @property
     def infeasible_parts(self) -> list[Instance]:
         """Parts proven to have no schedule."""
         pairs = zip(self.choice.parts, self.solutions, strict=True)
@@ -108,7 +116,8 @@ def _one_part(
         found = solve_by_cp_sat(part, limits, watch, seed=seed, seconds=seconds)
         if found.plans is not None or found.stopped is not Stopped.WITHIN_GAP:
             return found
-        return _better(found, solve_jointly(part, limits, watch, seed=seed, seconds=ends - limits.clock()))
+        joint = solve_jointly(part, limits, watch, seed=seed, seconds=ends - limits.clock())
+        return replace(_better(found, joint), fell_back=True)
     return solve_jointly(part, limits, watch, seed=seed, seconds=seconds, everywhere=careful)
 
 
@@ -159,7 +168,9 @@ def _second_look(found: Found, limits: Limits, watch: Watch, seed: int, gap: flo
 
 
 def _better(first: Solution, second: Solution) -> Solution:
-    """Keep the better schedule and the tighter bound of two solves of the same part."""
+    """Keep the better schedule and the tighter bound of two solves of the same part; a proof ends the matter."""
+    if second.stopped is Stopped.INFEASIBLE:
+        return second
     worse = second.margin is None or (first.margin is not None and first.margin >= second.margin)
     kept = first if worse else second
     return replace(

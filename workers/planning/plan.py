@@ -115,7 +115,7 @@ def _bound_above(replayed: Replay, bound: float) -> float | None:
 def _effort(choice: Choice, found: Found, limits: Limits) -> answer.Effort:
     return answer.Effort(
         method=choice.method,
-        why=choice.why,
+        why=found.why,
         threads=limits.threads,
         solver_seconds=sum(solution.solver_seconds for solution in found.solutions),
         build_seconds=sum(solution.build_seconds for solution in found.solutions),

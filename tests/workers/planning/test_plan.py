@@ -170,7 +170,7 @@ def test_an_answer_names_its_request_its_versions_and_its_cautions() -> None:
     document = job([10.0, 50.0], store())
     found = planned(document)
     assert len(found.provenance.request_sha256) == 64
-    assert set(found.provenance.versions) == {"hourwright", "highspy", "pyomo"}
+    assert set(found.provenance.versions) == {"hourwright", "highspy", "ortools", "pyomo"}
     assert any("Advisory" in caution for caution in found.cautions)
     again = planned(dict(reversed(document.items())))
     assert again.provenance.request_sha256 == found.provenance.request_sha256

@@ -82,6 +82,21 @@ class Clock:
         borders = -((self._first - ticks(instant)) // self._step)
         return min(self.count, max(0, borders))
 
+    def blocks(self, hours: float) -> list[list[int]]:
+        """Return the intervals of each block of so many hours, counted from each local midnight by absolute time."""
+        length = max(1, round(hours * 60 * _MINUTE))
+        found: list[list[int]] = []
+        for day, members in self.days.items():
+            midnight = ticks(datetime.combine(day, time(0), self._zone))
+            previous = None
+            for t in members:
+                number = (self._first + t * self._step - midnight) // length
+                if number != previous:
+                    found.append([])
+                found[-1].append(t)
+                previous = number
+        return found
+
     def between(self, opening: time, closing: time) -> dict[date, list[int]]:
         """Return, by the local day it opens in, the intervals of each stretch of local wall time.
 

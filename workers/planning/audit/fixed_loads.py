@@ -11,6 +11,7 @@ from workers.planning.audit.availability import read_availability
 from workers.planning.audit.case import Case
 from workers.planning.audit.clock import whole_series
 from workers.planning.audit.ledger import at, figure, pointer
+from workers.planning.audit.reserve import read_reserve
 from workers.planning.audit.set_points import Decision, read_powers
 
 
@@ -30,6 +31,7 @@ def replay_fixed_load(case: Case, place: int, load: FixedLoad, decision: Decisio
     if decision is None:
         return AssetSchedule(id=load.id, power_mw=forecast)
     power = read_powers(load.id, pointer("fleet", "assets", place), decision, forecast, case.ledger)
+    read_reserve(case, place, load, decision)
     _check_forecast(case, load, power, draw)
     return AssetSchedule(id=load.id, power_mw=power)
 

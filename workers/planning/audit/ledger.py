@@ -3,6 +3,7 @@
 from collections.abc import Callable, Sequence
 from datetime import datetime
 from math import inf
+from operator import sub
 
 from schemas.schedule import Verification, Violation
 
@@ -65,6 +66,9 @@ class Ledger:
                 return
             self.checks -= 1
             limits = [limits] * len(values)
+        elif max(map(sub, values, limits)) <= 0:
+            self.checks += len(limits) - limits.count(inf)
+            return
         for t, (value, limit) in enumerate(zip(values, limits, strict=True)):
             if limit < inf and not self.is_held(value - limit, limit):
                 if self._is_full():

@@ -1,21 +1,14 @@
-"""Add up what each meter reads, and check the connections.
+"""Add up what each meter reads: a site, or an asset without one.
 
-    net[m,t] = sum over the meter's assets of p[a,t] - sum over its stores of standby[a]
-    -import_limit[m,t] <= net[m,t] <= export_limit[m,t], for each site and for the fleet
-
-A meter is a site, or an asset without a site, which has no limit. Today's limits stand in place of the fleet's.
+net[m,t] = sum over the meter's assets of p[a,t] - sum over its stores of standby[a]
 """
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
-from functools import partial
 from math import fsum
 
 from schemas.fleet import Asset, Site, Storage
-from schemas.job import TodaysLimits
 from workers.planning.audit.case import Case
-from workers.planning.audit.clock import whole_series
-from workers.planning.audit.ledger import at, figure, pointer
 
 
 @dataclass(frozen=True)
@@ -61,42 +54,3 @@ def read_meters(case: Case, power_mw: Mapping[str, Sequence[float]]) -> list[Met
 def fleet_power(meters: Sequence[Meter]) -> list[float]:
     """Return the power of the whole fleet per interval, MW."""
     return [fsum(column) for column in zip(*(meter.net_mw for meter in meters), strict=True)]
-
-
-def check_connections(case: Case, meters: Sequence[Meter], fleet_mw: Sequence[float]) -> None:
-    """Check export and import of each site and of the fleet against the limits that hold today."""
-    for place, meter in enumerate(meters):
-        if meter.site is not None:
-            standing = (meter.site.export_limit_mw, meter.site.import_limit_mw)
-            _check(case, meter.id, ("fleet", "sites", place), standing, meter.net_mw)
-    _check(case, None, ("fleet",), (case.fleet.export_limit_mw, case.fleet.import_limit_mw), fleet_mw)
-
-
-def _check(
-    case: Case,
-    site: str | None,
-    place: tuple[str | int, ...],
-    standing: tuple[float | None, float | None],
-    net: Sequence[float],
-) -> None:
-    name = "fleet" if site is None else site
-    today = case.job.limits.get(name, TodaysLimits())
-    exported = (net, standing[0], today.export_limit_mw)
-    imported = ([-mw for mw in net], standing[1], today.import_limit_mw)
-    for verb, (values, limit, limit_today) in (("export", exported), ("import", imported)):
-        member = f"{verb}_limit_mw"
-        if limit_today is not None:
-            limits: float | Sequence[float] = whole_series(limit_today, case.clock.count, f"{member} of {name}")
-            where = pointer("limits", name, member)
-        elif limit is not None:
-            limits = limit
-            where = pointer(*place, member)
-        else:
-            continue
-        case.ledger.at_most(values, limits, partial(_tell, case, site, verb, where, values))
-
-
-def _tell(case: Case, site: str | None, verb: str, where: str, values: Sequence[float], t: int, excess: float) -> None:
-    flow = f"{site or 'the fleet'} {verb}s {figure(values[t])} MW from {at(case.clock.starts[t])}"
-    text = f"{flow}, {figure(excess)} MW above its limit of {figure(values[t] - excess)} MW"
-    case.ledger.report(f"{verb}_limit", where, excess, "MW", text, site=site, interval=t)

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from datetime import datetime
 from math import fsum
 
-from schemas.fleet import FixedLoad, Storage
+from schemas.fleet import Asset, FlexibleLoad, Generator, Renewable, Storage
 from schemas.job import OneWindow
 from schemas.schedule import (
     AssetSchedule,
@@ -21,8 +21,14 @@ from schemas.schedule import (
 )
 from workers.planning.audit.case import Case, open_case
 from workers.planning.audit.commitments import replay_commitments
+from workers.planning.audit.connections import check_connections
 from workers.planning.audit.fixed_loads import replay_fixed_load
-from workers.planning.audit.meters import check_connections, fleet_power, read_meters
+from workers.planning.audit.flexible_loads import replay_flexible_load
+from workers.planning.audit.generators import replay_generator
+from workers.planning.audit.lots import check_lots
+from workers.planning.audit.meters import fleet_power, read_meters
+from workers.planning.audit.renewables import replay_renewable
+from workers.planning.audit.rows import Readings
 from workers.planning.audit.set_points import Decision
 from workers.planning.audit.settlement import settle
 from workers.planning.audit.storage import replay_storage
@@ -50,16 +56,19 @@ def replay(job: OneWindow, decisions: Mapping[str, Decision]) -> Replay:
     """Return what the decisions lead to, by asset id; whatever they break is in `verification`, and never raised.
 
     The job is a validated one with fleet and window inline. Raises ValueError where it is not, NotAuditedError for a
-    kind of asset or commitment this audit has no rule for. A fixed load may have no decision: it draws its forecast.
+    task this audit has no rule for. A fixed load may have no decision: it draws its forecast.
     """
     case = open_case(job)
     assets = _replay_assets(case, decisions)
     power_mw = {asset.id: asset.power_mw for asset in assets}
     meters = read_meters(case, power_mw)
     fleet_mw = fleet_power(meters)
-    check_connections(case, meters, fleet_mw)
+    held = {asset.id: asset.reserve_mw for asset in assets}
+    check_connections(case, meters, fleet_mw, held)
+    check_lots(case, meters, fleet_mw)
     site_mw = {meter.id: meter.net_mw for meter in meters if meter.site is not None}
-    commitments, shortfall_costs = replay_commitments(case, power_mw, site_mw, fleet_mw)
+    by_id = {asset.id: asset for asset in case.fleet.assets}
+    commitments, shortfall_costs = replay_commitments(case, Readings(by_id, power_mw, site_mw, fleet_mw, held))
     sites, fleet = settle(case, meters, fleet_mw)
     totals = _totals(assets, [*(site.totals for site in sites), fleet.totals], shortfall_costs)
     return Replay(
@@ -75,13 +84,9 @@ def replay(job: OneWindow, decisions: Mapping[str, Decision]) -> Replay:
 
 
 def _replay_assets(case: Case, decisions: Mapping[str, Decision]) -> list[AssetSchedule]:
-    found = []
-    for place, asset in enumerate(case.fleet.assets):
-        decision = decisions.get(asset.id)
-        if isinstance(asset, Storage):
-            found.append(replay_storage(case, place, asset, decision))
-        elif isinstance(asset, FixedLoad):
-            found.append(replay_fixed_load(case, place, asset, decision))
+    found = [
+        _replay_asset(case, place, asset, decisions.get(asset.id)) for place, asset in enumerate(case.fleet.assets)
+    ]
     known = {asset.id for asset in case.fleet.assets}
     for name in decisions:
         if name not in known:
@@ -90,12 +95,27 @@ def _replay_assets(case: Case, decisions: Mapping[str, Decision]) -> list[AssetS
     return found
 
 
+def _replay_asset(case: Case, place: int, asset: Asset, decision: Decision | None) -> AssetSchedule:
+    if isinstance(asset, Storage):
+        return replay_storage(case, place, asset, decision)
+    if isinstance(asset, Generator):
+        return replay_generator(case, place, asset, decision)
+    if isinstance(asset, Renewable):
+        return replay_renewable(case, place, asset, decision)
+    if isinstance(asset, FlexibleLoad):
+        return replay_flexible_load(case, place, asset, decision)
+    return replay_fixed_load(case, place, asset, decision)
+
+
 def _totals(assets: Sequence[AssetSchedule], meters: Sequence[MeterTotals], shortfall_costs: list[float]) -> Totals:
     return Totals(
         sales=fsum(meter.sales for meter in meters),
         purchases=fsum(meter.purchases for meter in meters),
         fees=fsum(meter.fees for meter in meters),
         peak_import_charge=fsum(meter.peak_import_charge for meter in meters),
+        reserve_income=fsum(asset.totals.reserve_income for asset in assets),
+        fuel_cost=fsum(asset.totals.fuel_cost for asset in assets),
+        start_cost=fsum(asset.totals.start_cost for asset in assets),
         wear_cost=fsum(asset.totals.wear_cost for asset in assets),
         final_energy_value=fsum(asset.totals.final_energy_value for asset in assets),
         shortfall_cost=fsum(shortfall_costs),

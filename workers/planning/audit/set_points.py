@@ -1,4 +1,4 @@
-"""Read decisions: one finite power per interval, whatever was sent."""
+"""Read decisions: one finite number per interval, whatever was sent."""
 
 from collections.abc import Iterable, Mapping, Sequence, Sized
 from dataclasses import dataclass, field
@@ -6,7 +6,7 @@ from math import fsum, isfinite
 from numbers import Real
 
 from schemas.quantities import LARGEST
-from workers.planning.audit.ledger import Ledger, at
+from workers.planning.audit.ledger import IDLE_MW, Ledger, at
 
 
 @dataclass(frozen=True)
@@ -14,11 +14,12 @@ class Decision:
     """What was decided for one asset: power in MW per interval (positive into the grid), on or off, reserve held in MW.
 
     One net power per interval is all there is: a store that charges and discharges at once cannot be written down.
+    Reserve by product: one number per interval, or one for all. `on` None: on with power above 1e-6 MW.
     """
 
     power_mw: Sequence[float]
     on: Sequence[bool] | None = None
-    reserve_mw: Mapping[str, Sequence[float]] = field(default_factory=dict)
+    reserve_mw: Mapping[str, Sequence[float] | float] = field(default_factory=dict)
 
 
 def read_powers(asset: str, where: str, decision: Decision | None, instead: list[float], ledger: Ledger) -> list[float]:
@@ -28,46 +29,66 @@ def read_powers(asset: str, where: str, decision: Decision | None, instead: list
     """
     ledger.checks += 1
     if decision is None:
-        text = f"{asset} has no decision: it is taken as idle for the rest of this audit"
+        taken = "at its forecast" if any(instead) else "as idle"
+        text = f"{asset} has no decision: it is taken {taken} for the rest of this audit"
         ledger.report("decision_missing", where, float(len(instead)), "intervals", text, asset=asset)
         return instead
-    for product in decision.reserve_mw or ():
-        text = f"{asset} holds reserve of {product!r}, which is no product of this window"
-        ledger.report("reserve_product_unknown", where, 1.0, "products", text, asset=asset)
-    powers = decision.power_mw
-    if _are_plain_powers(powers, len(instead)):
-        return [float(power) for power in powers]
-    return _mend(asset, where, powers, instead, ledger)
+    return read_series(asset, where, "powers", decision.power_mw, instead, ledger)
 
 
-def _are_plain_powers(powers: object, count: int) -> bool:
-    """Tell in a few passes at the speed of C whether there is nothing to report."""
-    if not isinstance(powers, list | tuple) or len(powers) != count:
-        return False
-    try:
-        return isfinite(fsum(powers)) and max(powers) <= LARGEST and min(powers) >= -LARGEST
-    except (TypeError, ValueError, OverflowError):
-        return False
-
-
-def _mend(asset: str, where: str, powers: object, instead: list[float], ledger: Ledger) -> list[float]:
+def read_series(asset: str, where: str, what: str, values: object, instead: list[float], ledger: Ledger) -> list[float]:
+    """Return one finite number per interval; report what is none, and take `instead` there."""
+    if isinstance(values, list | tuple) and _are_plain(values, len(instead)):
+        return [float(value) for value in values]
     # Other sequences, arrays among them, are taken too; what has no length may have no end.
-    sent = list(powers) if isinstance(powers, Iterable) and isinstance(powers, Sized) else []
-    if len(sent) != len(instead):
-        text = f"{asset} has {len(sent)} powers for {len(instead)} intervals"
-        missing = float(abs(len(sent) - len(instead)))
-        ledger.report("decision_length", where, missing, "intervals", text, asset=asset)
+    sent = list(values) if isinstance(values, Iterable) and isinstance(values, Sized) else []
+    _check_length(asset, where, what, len(sent), len(instead), ledger)
     mended = list(instead)
     for t, value in enumerate(sent[: len(instead)]):
         power = _as_power(value)
         if power is None:
-            text = (
-                f"{asset} has {str(value)[:40]!r} in the interval from {at(ledger.starts[t])}, which is no power in MW"
-            )
-            ledger.report("decision_unreadable", where, 1.0, "values", text, asset=asset, interval=t)
+            _tell_unreadable(asset, where, value, "no power in MW", t, ledger)
         else:
             mended[t] = power
     return mended
+
+
+def read_on(asset: str, where: str, decision: Decision | None, power: Sequence[float], ledger: Ledger) -> list[bool]:
+    """Return for each interval whether a generator is on; report what is neither, and go by its power there."""
+    by_power = [mw > IDLE_MW for mw in power]
+    if decision is None or decision.on is None:
+        return by_power
+    ledger.checks += 1
+    values: object = decision.on
+    sent = list(values) if isinstance(values, Iterable) and isinstance(values, Sized) else []
+    _check_length(asset, where, "entries of on or off", len(sent), len(power), ledger)
+    for t, value in enumerate(sent[: len(power)]):
+        if isinstance(value, bool):
+            by_power[t] = value
+        else:
+            _tell_unreadable(asset, where, value, "neither true nor false", t, ledger)
+    return by_power
+
+
+def _are_plain(values: Sequence[float], count: int) -> bool:
+    """Tell in a few passes at the speed of C whether there is nothing to report."""
+    if len(values) != count:
+        return False
+    try:
+        return isfinite(fsum(values)) and max(values) <= LARGEST and min(values) >= -LARGEST
+    except (TypeError, ValueError, OverflowError):
+        return False
+
+
+def _check_length(asset: str, where: str, what: str, sent: int, count: int, ledger: Ledger) -> None:
+    if sent != count:
+        text = f"{asset} has {sent} {what} for {count} intervals"
+        ledger.report("decision_length", where, float(abs(sent - count)), "intervals", text, asset=asset)
+
+
+def _tell_unreadable(asset: str, where: str, value: object, fault: str, t: int, ledger: Ledger) -> None:
+    text = f"{asset} has {str(value)[:40]!r} in the interval from {at(ledger.starts[t])}, which is {fault}"
+    ledger.report("decision_unreadable", where, 1.0, "values", text, asset=asset, interval=t)
 
 
 def _as_power(value: object) -> float | None:

@@ -20,8 +20,10 @@ from workers.planning.audit.case import Case
 from workers.planning.audit.initial import ceiling_mwh, final_target_mwh, floor_mwh, kept_per_interval, read_start
 from workers.planning.audit.ledger import IDLE_MW, at, figure, pointer
 from workers.planning.audit.movement import check_ramps
+from workers.planning.audit.reserve import read_reserve, reserve_income
 from workers.planning.audit.runs import check_runs
 from workers.planning.audit.set_points import Decision, read_powers
+from workers.planning.audit.storage_reserve import check_storage_reserve
 from workers.planning.audit.store_case import StoreCase
 
 _BEYOND_ANY_STORE_MWH = 1e100
@@ -48,8 +50,14 @@ def replay_storage(case: Case, place: int, store: Storage, decision: Decision | 
     target = final_target_mwh(store, start, case.job, case.clock)
     if target is not None:
         _check_final_target(one, stored[-1], target)
-    totals = AssetTotals(wear_cost=_wear_cost(one), final_energy_value=_final_energy_value(one, stored[-1], target))
-    return AssetSchedule(id=store.id, power_mw=power, stored_mwh=stored, totals=totals)
+    held = read_reserve(case, place, store, decision)
+    check_storage_reserve(one, stored, held)
+    totals = AssetTotals(
+        wear_cost=_wear_cost(one),
+        final_energy_value=_final_energy_value(one, stored[-1], target),
+        reserve_income=reserve_income(case, held),
+    )
+    return AssetSchedule(id=store.id, power_mw=power, stored_mwh=stored, reserve_mw=held, totals=totals)
 
 
 def stored_energy(store: Storage, start_mwh: float, power: Sequence[float], hours: float) -> list[float]:

@@ -5,6 +5,9 @@
     sum of down[p,t] * m[p] * eta_c  <=  ceiling[t] - s[t-1],  ceiling[t] - s[t]       (3)
 
 m  hours that a product must last; floor, ceiling  limits of stored energy in the interval, MWh
+
+A store that starts above its ceiling and leaks has a ceiling that falls: where what it starts an interval with may
+lie above the interval's ceiling, (3) asks for no down-reserve rather than for less than none.
 """
 
 import numpy as np
@@ -49,9 +52,29 @@ def _at_both_ends(
     """Add sum of lasting + sign * stored <= limit, with the energy at the end and at the start of each interval."""
     stored, count = columns.stored, len(columns.stored)
     model.rows(-INFINITE, limit, *lasting, (stored, sign))
-    first = limit[0] - sign * columns.unit.initial_mwh
+    first = max(limit[0] - sign * columns.unit.initial_mwh, 0.0)
     model.rows(-INFINITE, first, *((held[:1], factor) for held, factor in lasting))
-    if count > 1:
-        later = np.arange(1, count)
-        shifted = ((held[later], factor) for held, factor in lasting)
-        model.rows(-INFINITE, limit[1:], *shifted, (stored[:-1], sign))
+    falling = np.flatnonzero(sign * (limit[1:] - limit[:-1]) < 0) + 1
+    steady = np.setdiff1d(np.arange(1, count), falling)
+    if len(steady):
+        shifted = ((held[steady], factor) for held, factor in lasting)
+        model.rows(-INFINITE, limit[steady], *shifted, (stored[steady - 1], sign))
+    if len(falling):
+        _where_the_limit_falls(model, columns, lasting, sign, limit, falling)
+
+
+def _where_the_limit_falls(
+    model: Model,
+    columns: StoreColumns,
+    lasting: list[tuple[Columns, float]],
+    sign: float,
+    limit: Floats,
+    where: Columns,
+) -> None:
+    """Let the start of an interval lie beyond its limit, with nothing held then."""
+    over = np.abs(limit[where] - limit[where - 1])
+    most = columns.unit.ceiling_mwh[where] - columns.unit.floor_mwh[where] + over
+    within = model.columns(len(where), 0.0, 1.0, integer=True)
+    shifted = [(held[where], factor) for held, factor in lasting]
+    model.rows(-INFINITE, limit[where] + over, *shifted, (columns.stored[where - 1], sign), (within, over))
+    model.rows(-INFINITE, 0.0, *shifted, (within, -most))

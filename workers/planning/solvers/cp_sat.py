@@ -2,8 +2,9 @@
 
 A column x in [l, u] becomes x = step * X with X whole. Every feasible x lies within half a step of such a point, so
 each row `lower <= sum a*x <= upper` is loosened by the sum of |a| * step / 2, and by what rounding its coefficients to
-whole numbers may move it. What comes back is a choice for the integer columns and a bound of the model given; the
-powers are only near: settle them by an LP with the choices fixed.
+whole numbers may move it. Its bound is one of the model given; its powers are only near, and make use of every
+looseness. A *near* model loosens equations alone: its choice of the integer columns is likelier to have exact powers
+(settle them by an LP with the choices fixed), its bound proves nothing.
 """
 
 from dataclasses import dataclass
@@ -17,14 +18,19 @@ from workers.planning.solvers.ending import Ending, SolverError, Stopped
 from workers.planning.solvers.highs import Effort, Matrix
 from workers.planning.units import Floats
 
-FINEST_STEP, COARSEST_STEP = 1e-6, 1e-3
-"""MW, MWh or whatever the column counts: 1 W to 1 kW."""
+STEP = 1e-3
+"""MW, MWh or whatever a column counts: 1 kW. Ten times finer, small fleets took ten times as long, or did not end."""
 
 LARGEST = 2**40
 """Most steps in a column's range."""
 
 COEFFICIENT = 2.0**24
 """Whole coefficients of a row are at most this: finer ones gain nothing over the steps."""
+
+NEARLY = 1e-3
+"""What rounding a bound may cost a row of a near model, in its whole units."""
+
+EXACT_FACTORS = (1, 2, 3, 4, 5, 10, 20, 50, 100, 200, 500, 1000)
 
 MEANING: dict[str, Stopped | None] = {
     "OPTIMAL": Stopped.WITHIN_GAP,
@@ -44,8 +50,10 @@ class Steps:
     lost: Floats
 
 
-def solve(matrix: Matrix, effort: Effort, watch: Watch) -> Ending:
+def solve(matrix: Matrix, effort: Effort, watch: Watch, *, near: bool = False) -> Ending:
     """Maximise over whole steps; `values` are near a feasible point, not feasible, and `margin` is theirs.
+
+    With `near`, equations alone are loosened: nothing is proven, neither by the bound (infinite) nor by failing.
 
     Raises ValueError for a column without finite bounds, SolverError for a word without a meaning.
     """
@@ -54,16 +62,17 @@ def solve(matrix: Matrix, effort: Effort, watch: Watch) -> Ending:
     if not (np.isfinite(matrix.lower).all() and np.isfinite(matrix.upper).all()):
         raise ValueError("CP-SAT needs finite bounds for every column")
     began = perf_counter()
-    steps = _steps(matrix, effort)
+    steps = _steps(matrix)
     model, variables = cp_model.CpModel(), []
     for low, high in zip(np.floor(matrix.lower / steps.size), np.ceil(matrix.upper / steps.size), strict=True):
         variables.append(model.new_int_var(int(low), int(high), ""))
     for k in range(len(matrix.row_lower)):
-        _add_row(model, variables, matrix, steps, k)
+        _add_row(model, variables, matrix, steps, k, near=near)
     whole, scale, slack = _whole(matrix.money, steps, matrix)
     model.maximize(cp_model.LinearExpr.weighted_sum(variables, whole.tolist()))
     solver = cp_model.CpSolver()
     solver.parameters.num_workers = 1
+    solver.parameters.linearization_level = 2
     solver.parameters.random_seed = effort.seed
     solver.parameters.max_time_in_seconds = max(effort.seconds, 0.0)
     solver.parameters.relative_gap_limit = effort.relative_gap / 2
@@ -76,8 +85,10 @@ def solve(matrix: Matrix, effort: Effort, watch: Watch) -> Ending:
         stopped = Stopped.INTERRUPTED
     seconds = perf_counter() - began
     if stopped is Stopped.INFEASIBLE:
-        return Ending(stopped, None, None, -np.inf, seconds)
-    bound = solver.best_objective_bound / scale + slack + matrix.constant if status != "UNKNOWN" else np.inf
+        return Ending(stopped, None, None, np.inf if near else -np.inf, seconds)
+    bound = (
+        solver.best_objective_bound / scale + slack + matrix.constant if status != "UNKNOWN" and not near else np.inf
+    )
     if status == "UNKNOWN":
         return Ending(stopped, None, None, bound, seconds)
     values = steps.size * np.array([solver.value(variable) for variable in variables], dtype=float)
@@ -85,41 +96,55 @@ def solve(matrix: Matrix, effort: Effort, watch: Watch) -> Ending:
     return Ending(stopped, values, float(matrix.money @ values) + matrix.constant, bound, seconds)
 
 
-def _steps(matrix: Matrix, effort: Effort) -> Steps:
-    """Choose steps so fine that rounding costs a small share of the gap asked for."""
-    allowed = max(effort.absolute_gap, effort.relative_gap) / 8
-    weight = float(np.abs(matrix.money[~matrix.integer]).sum())
-    step = float(np.clip(2 * allowed / weight if weight else COARSEST_STEP, FINEST_STEP, COARSEST_STEP))
-    size = np.maximum(step, (matrix.upper - matrix.lower) / LARGEST)
-    size = np.where(matrix.integer, 1.0, size)
+def _steps(matrix: Matrix) -> Steps:
+    size = np.where(matrix.integer, 1.0, np.maximum(STEP, (matrix.upper - matrix.lower) / LARGEST))
     return Steps(size, np.where(matrix.integer, 0.0, size / 2))
 
 
 def _whole(coefficients: Floats, steps: Steps, matrix: Matrix) -> tuple[np.ndarray, float, float]:
     """Round coefficients per step to whole numbers; give them, their scale, and the most that rounding can move."""
     per_step = coefficients * steps.size
-    largest = float(np.abs(per_step).max(initial=0.0))
-    scale = COEFFICIENT / largest if largest > 0 else 1.0
+    scale = _scale(per_step) if per_step.any() else 1.0
     whole = np.round(per_step * scale).astype(np.int64)
     reach = np.maximum(np.abs(matrix.lower), np.abs(matrix.upper)) / steps.size + 1.0
     moved = float(np.abs(whole / scale - per_step) @ reach)
     return whole, scale, moved + float(np.abs(coefficients) @ steps.lost)
 
 
-def _add_row(model: cp_model.CpModel, variables: list[cp_model.IntVar], matrix: Matrix, steps: Steps, k: int) -> None:
+def _scale(per_step: Floats) -> float:
+    """Find a scale that makes coefficients whole: an exact small one where there is one, else a large one."""
+    smallest = float(np.abs(per_step[per_step != 0]).min())
+    for factor in EXACT_FACTORS:
+        scaled = per_step * (factor / smallest)
+        if np.abs(scaled - np.round(scaled)).max() < 1e-9 * np.abs(scaled).max() and np.abs(scaled).max() < COEFFICIENT:
+            return factor / smallest
+    return COEFFICIENT / float(np.abs(per_step).max())
+
+
+def _down(value: float, loose: int) -> float:
+    """Round a lower bound: outwards and one further where it may be loose, inwards where not."""
+    return float(np.floor(value)) - loose if loose else float(np.ceil(value))
+
+
+def _add_row(
+    model: cp_model.CpModel, variables: list[cp_model.IntVar], matrix: Matrix, steps: Steps, k: int, *, near: bool
+) -> None:
     """Add a row, loosened so that every feasible point has a whole one nearby that keeps it."""
     place = slice(matrix.rows.indptr[k], matrix.rows.indptr[k + 1])
     columns, coefficients = matrix.rows.indices[place], matrix.rows.data[place]
     if len(columns) == 0:
         return
     per_step = coefficients * steps.size[columns]
-    scale = COEFFICIENT / float(np.abs(per_step).max())
+    scale = _scale(per_step)
     whole = np.round(per_step * scale).astype(np.int64)
     reach = np.maximum(np.abs(matrix.lower[columns]), np.abs(matrix.upper[columns])) / steps.size[columns] + 1.0
     slack = float(np.abs(whole / scale - per_step) @ reach) + float(np.abs(coefficients) @ steps.lost[columns])
     low, high = matrix.row_lower[k], matrix.row_upper[k]
+    if near and low != high:
+        slack = NEARLY / scale
     most = int(np.abs(whole).astype(float) @ reach) + 1
-    lower = -most if not np.isfinite(low) else max(-most, int(np.floor((low - slack) * scale)) - 1)
-    upper = most if not np.isfinite(high) else min(most, int(np.ceil((high + slack) * scale)) + 1)
+    loose = 0 if near and low != high else 1
+    lower = -most if not np.isfinite(low) else max(-most, int(_down((low - slack) * scale, loose)))
+    upper = most if not np.isfinite(high) else min(most, -int(_down(-(high + slack) * scale, loose)))
     expression = cp_model.LinearExpr.weighted_sum([variables[j] for j in columns], whole.tolist())
     model.add_linear_constraint(expression, lower, upper)
