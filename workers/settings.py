@@ -10,7 +10,7 @@ from pydantic_settings import BaseSettings, SettingsConfigDict
 
 PREFIX = "HOURWRIGHT_"
 SERVICES_OWN = frozenset(
-    {"host", "port", "allowed_hosts", "trusted_proxy", "http_threads", "drain_seconds"}
+    {"host", "port", "allowed_hosts", "trusted_proxy", "no_auth", "http_threads", "drain_seconds"}
     | {"retention_days", "idempotency_hours", "longest_queue", "memory_share", "revisions_kept"}
 )
 """Settings of the API: one file of settings may serve every process, so they are known here."""

@@ -1,8 +1,8 @@
-"""Plan a fleet of stores and fixed loads as one mixed-integer program, written from the contract alone.
+"""Plan a fleet as one mixed-integer program, written from the contract alone.
 
 It reads the job document as a caller sends it, `fleet` and `window` inline, and shares no code with the planner: not
 its models, not its day, outage or unit arithmetic. Plain rather than fast; meant for small jobs. It takes a job to be
-valid. Supported: kinds `storage` and `fixed_load`, commitments `hours_at_least`, everything the contract says of them.
+valid. Supported: every kind of asset and commitment, reserve products and lots; of the tasks `schedule` alone.
 """
 
 from __future__ import annotations
@@ -10,10 +10,12 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
-from tests.oracles.formulation_clock import Clock, Job, fractions, given, read_clock, series
+from tests.oracles.formulation_clock import Clock, Job, read_clock
 from tests.oracles.formulation_commitments import add_commitments
+from tests.oracles.formulation_generator import add_generator
 from tests.oracles.formulation_meters import Powers, add_meters
-from tests.oracles.formulation_program import Affine, Program
+from tests.oracles.formulation_passive import add_flexible_load, add_renewable, fixed_load
+from tests.oracles.formulation_program import Affine, Program, Solution
 from tests.oracles.formulation_storage import Power, add_storage
 
 Outcome = Literal["optimal", "feasible", "infeasible", "undecided"]
@@ -24,14 +26,17 @@ class Answer:
     """Hold what the oracle found.
 
     `outcome` is `feasible` or `undecided` where time ran out; `margin` and `bound` (an upper one) are in the window's
-    currency, None without a schedule; `powers` are MW at the terminals per asset and interval, positive = into the
-    grid.
+    currency, None without a schedule, and with costs squared too the true margin of the schedule and a true bound;
+    `powers` are MW at the terminals per asset and interval, positive = into the grid; `on` is given for generators,
+    `reserves` (MW per product and interval) for assets that may hold any.
     """
 
     outcome: Outcome
     margin: float | None = None
     bound: float | None = None
     powers: dict[str, list[float]] = field(default_factory=dict)
+    on: dict[str, list[bool]] = field(default_factory=dict)
+    reserves: dict[str, dict[str, list[float]]] = field(default_factory=dict)
 
 
 def solve(job: Job, *, gap: float = 1e-6, time_limit: float = 60.0) -> Answer:
@@ -48,36 +53,46 @@ def solve(job: Job, *, gap: float = 1e-6, time_limit: float = 60.0) -> Answer:
         raise RuntimeError("the solver ended with status", solution.status)
     if solution.columns is None:
         return Answer("undecided")
-    found = {
-        asset_id: [_value_of(expression, solution.columns) for expression in power.net]
-        for asset_id, power in powers.items()
-    }
-    return Answer("optimal" if solution.status == 0 else "feasible", solution.value, solution.bound, found)
+    outcome: Outcome = "optimal" if solution.status == 0 else "feasible"
+    return _answer(outcome, solution, powers)
 
 
 def formulate(job: Job, clock: Clock) -> tuple[Program, Powers]:
     """Return the program of a job and the power of each asset in it."""
-    if given(job["fleet"], "lot_mw") or any(given(site, "lot_mw") for site in given(job["fleet"], "sites", [])):
-        raise ValueError("this oracle does not know lots")
-    program, powers = Program(), {}
-    for asset in job["fleet"]["assets"]:
-        if asset["kind"] == "storage":
-            powers[asset["id"]] = add_storage(program, job, asset, clock)
-        elif asset["kind"] == "fixed_load":
-            powers[asset["id"]] = _fixed_load(job, asset, clock)
-        else:
-            raise ValueError(f"this oracle does not know {asset['kind']}")
+    program = Program()
+    powers = {asset["id"]: _add_asset(program, job, asset, clock) for asset in job["fleet"]["assets"]}
     add_meters(program, job, powers, clock)
     add_commitments(program, job, powers, clock)
     return program, powers
 
 
-def _fixed_load(job: Job, asset: dict[str, Any], clock: Clock) -> Power:
-    """Return a load that draws its forecast, scaled by what outages leave of it."""
-    drawn = series(job["forecasts"][asset["id"]], len(clock))
-    left = fractions(job, clock, asset["id"], "charge")
-    return Power([Affine({}, -mw * fraction) for mw, fraction in zip(drawn, left, strict=True)], 0.0)
+def _add_asset(program: Program, job: Job, asset: dict[str, Any], clock: Clock) -> Power:
+    if asset["kind"] == "fixed_load":
+        return fixed_load(job, asset, clock)
+    add = {
+        "storage": add_storage,
+        "generator": add_generator,
+        "renewable": add_renewable,
+        "flexible_load": add_flexible_load,
+    }.get(asset["kind"])
+    if add is None:
+        raise ValueError(f"this oracle does not know {asset['kind']}")
+    return add(program, job, asset, clock)
 
 
-def _value_of(expression: Affine, columns: Any) -> float:
-    return expression.constant + sum(a * float(columns[c]) for c, a in expression.terms.items())
+def _answer(outcome: Outcome, solution: Solution, powers: Powers) -> Answer:
+    def values(expressions: list[Affine]) -> list[float]:
+        return [expression.at(solution.columns) for expression in expressions]
+
+    return Answer(
+        outcome,
+        solution.value,
+        solution.bound,
+        {key: values(power.net) for key, power in powers.items()},
+        {key: [v > 0.5 for v in values(power.on)] for key, power in powers.items() if power.on is not None},
+        {
+            key: {product: values(held) for product, held in power.reserve.held.items()}
+            for key, power in powers.items()
+            if power.reserve.held
+        },
+    )

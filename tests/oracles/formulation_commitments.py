@@ -1,95 +1,101 @@
-"""Write down `hours_at_least`: enough intervals with power at or above the threshold and its headroom.
-
-z[t] = 1  only where  power >= threshold + headroom, or t is excused
-g[t] <= z[t], and g is made of unbroken stretches of at least `min_block_hours`, all within the row's intervals
-h * sum(g) + counted before + shortfall >= hours
-"""
+"""Write down commitments: whom each set of rows is about, its intervals, its credit, and the rule of its kind."""
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import Any
 
 from tests.oracles.formulation_clock import Clock, Job, given, spans
+from tests.oracles.formulation_deliveries import (
+    add_energy_at_least,
+    add_energy_at_most,
+    add_firm_delivery,
+    add_reserve_holding,
+)
+from tests.oracles.formulation_hours import add_hours_at_least, add_hours_at_most
 from tests.oracles.formulation_meters import Powers, metered, site_assets
 from tests.oracles.formulation_program import Affine, Program, total
+from tests.oracles.formulation_row import Row
+
+
+@dataclass(frozen=True)
+class Subject:
+    """Hold what a set of rows is about: a key for its credit, the assets in it, and its power as it counts, MW."""
+
+    key: str
+    members: list[str]
+    power: list[Affine]
 
 
 def add_commitments(program: Program, job: Job, powers: Powers, clock: Clock) -> None:
     """Add every commitment of the job.
 
-    Raises ValueError for a kind other than `hours_at_least`.
+    Raises ValueError for a kind that is none of the contract.
     """
     for commitment in given(job, "commitments", []):
-        if commitment["kind"] != "hours_at_least":
+        add = {
+            "hours_at_least": add_hours_at_least,
+            "hours_at_most": add_hours_at_most,
+            "firm_delivery": add_firm_delivery,
+            "energy_at_least": add_energy_at_least,
+            "energy_at_most": add_energy_at_most,
+            "reserve_holding": add_reserve_holding,
+        }.get(commitment["kind"])
+        if add is None:
             raise ValueError(f"this oracle does not know {commitment['kind']}")
-        counted = given(given(given(job, "counted_before"), "commitments"), commitment["id"], 0.0)
-        for asset_id, members, power in _subjects(job, commitment, powers, clock):
-            credit = given(counted, asset_id, 0.0) if isinstance(counted, dict) else counted
-            asked = _asked_mw(job, commitment, members)
-            for span in spans(commitment, clock):
-                _row(program, commitment, clock, power, asked, span.intervals, credit)
-                credit = 0.0
+        for row in _rows(job, commitment, powers, clock):
+            add(program, row)
 
 
-def _subjects(
-    job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock
-) -> list[tuple[str, list[str], list[Affine]]]:
-    """Return what each set of rows is about: a key for its credit, the assets in it, and its power, MW."""
+def _rows(job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock) -> list[Row]:
+    """Return the rows of a commitment, what was counted before credited to the first of each subject."""
+    counted = given(given(given(job, "counted_before"), "commitments"), commitment["id"], 0.0)
+    excused = {t for span in given(commitment, "excused", []) for t in clock.inside(span.get("from"), span.get("to"))}
+    sign = -1.0 if given(commitment, "direction", "discharge") == "charge" else 1.0
+    rows = []
+    for subject in _subjects(job, commitment, powers, clock):
+        credit = given(counted, subject.key, 0.0) if isinstance(counted, dict) else counted
+        reserve = []
+        if commitment["kind"] == "reserve_holding":
+            product = commitment["product"]
+            reserve = [total(powers[a].reserve.of(product, t) for a in subject.members) for t in range(len(clock))]
+        for span in spans(commitment, clock):
+            rows.append(
+                Row(
+                    commitment=commitment,
+                    clock=clock,
+                    intervals=span.intervals,
+                    power=[power * sign for power in subject.power],
+                    reserve=reserve,
+                    rated_mw=_rated_mw(job, commitment, subject.members),
+                    excused=excused,
+                    credit=credit,
+                )
+            )
+            credit = 0.0
+    return rows
+
+
+def _subjects(job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock) -> list[Subject]:
+    """Return what each set of rows is about; assets one by one at their terminals, sums as a meter reads them."""
     applies_to = commitment["applies_to"]
     singles = given(applies_to, "assets")
     if singles is not None:
-        return [(asset_id, [asset_id], powers[asset_id].net) for asset_id in singles]
+        return [Subject(asset_id, [asset_id], powers[asset_id].net) for asset_id in singles]
     members = given(applies_to, "group")
     if members is None and given(applies_to, "site") is not None:
         members = site_assets(job, applies_to["site"])
     if members is None:
         members = list(powers)
-    return [("", members, metered(powers, members, clock))]
+    return [Subject("", members, metered(powers, members, clock))]
 
 
-def _asked_mw(job: Job, commitment: dict[str, Any], members: list[str]) -> float:
-    """Return threshold plus headroom; a fraction is one of the rated power of the stores among `members`."""
-    threshold, direction = commitment["threshold"], given(commitment, "direction", "discharge")
-    asked = given(threshold, "mw")
-    if asked is None:
-        stores = [a for a in job["fleet"]["assets"] if a["id"] in members and a["kind"] == "storage"]
-        asked = threshold["fraction_of_rated"] * sum(a[f"{direction}_limit_mw"] for a in stores)
-    return float(asked) + float(given(commitment, "headroom_mw", 0.0))
-
-
-def _row(
-    program: Program,
-    commitment: dict[str, Any],
-    clock: Clock,
-    power: list[Affine],
-    asked: float,
-    intervals: list[int],
-    credit: float,
-) -> None:
-    """Add one row: qualifying intervals, their blocks, and the hours they must reach or what falling short costs."""
-    sign = -1.0 if given(commitment, "direction", "discharge") == "charge" else 1.0
-    excused = {t for span in given(commitment, "excused", []) for t in clock.inside(span.get("from"), span.get("to"))}
-    counts: dict[int, Affine] = {}
-    for t in intervals:
-        counts[t] = program.binary()
-        if t not in excused:
-            delivered = power[t] * sign
-            slack = asked - program.smallest(delivered)
-            program.at_least(delivered - counts[t] * slack, asked - slack)
-    _blocks(program, counts, clock.whole(given(commitment, "min_block_hours", 0.0)))
-    owed = max(0.0, commitment["hours"] - credit)
-    price = given(commitment, "shortfall_price_per_hour")
-    shortfall = program.column(0.0, 0.0 if price is None else owed)
-    program.at_least(total(counts.values()) * clock.hours + shortfall, owed)
-    program.earn(shortfall * -(price or 0.0))
-
-
-def _blocks(program: Program, counts: dict[int, Affine], length: int) -> None:
-    """Let intervals count only in unbroken stretches of at least `length`, none of it outside the row."""
-    if length <= 1:
-        return
-    for t, counted in counts.items():
-        begin = program.column(0.0, 1.0)
-        program.at_least(begin - counted + counts.get(t - 1, Affine({})), 0.0)
-        for later in range(t, t + length):
-            program.at_least(counts.get(later, Affine({})) - begin, 0.0)
+def _rated_mw(job: Job, commitment: dict[str, Any], members: list[str]) -> float:
+    """Return the rated power of the stores and generators among `members` in the commitment's direction."""
+    direction, rated = given(commitment, "direction", "discharge"), 0.0
+    for asset in job["fleet"]["assets"]:
+        if asset["id"] in members and asset["kind"] == "storage":
+            rated += asset[f"{direction}_limit_mw"]
+        if asset["id"] in members and asset["kind"] == "generator" and direction == "discharge":
+            rated += asset["max_output_mw"]
+    return rated

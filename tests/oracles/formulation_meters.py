@@ -1,4 +1,4 @@
-"""Write down what meters read and pay: limits, settlement against positions, fees, the peak import charge.
+"""Write down what meters read and pay: limits, lots, settlement against positions, fees, the peak import charge.
 
 net[m,t] = sum of (power - standby load) of the assets on meter m
 sales - purchases = sum over t of h * (sell * max(net - position, 0) - buy * max(position - net, 0))
@@ -6,6 +6,7 @@ sales - purchases = sum over t of h * (sell * max(net - position, 0) - buy * max
 
 from __future__ import annotations
 
+from math import ceil, floor
 from typing import Any
 
 from tests.oracles.formulation_clock import Clock, Job, given, series
@@ -34,28 +35,52 @@ def add_meters(program: Program, job: Job, powers: Powers, clock: Clock) -> None
     for site in given(fleet, "sites", []):
         net = metered(powers, site_assets(job, site["id"]), clock)
         nets[site["id"]] = net
-        _limits(program, job, site["id"], site, net)
+        _limits(program, job, site, [powers[a] for a in site_assets(job, site["id"])], net)
+        _lots(program, site, net)
         _fees(program, site, clock, net)
         _peak(program, job, site, net)
     for asset in fleet["assets"]:
         if given(asset, "site") is None:
             nets[asset["id"]] = metered(powers, [asset["id"]], clock)
     everything = metered(powers, list(powers), clock)
-    _limits(program, job, "fleet", fleet, everything)
+    _limits(program, job, fleet, list(powers.values()), everything)
+    _lots(program, fleet, everything)
     if given(job["window"], "settled_at", "site") == "fleet":
         nets = {"fleet": everything}
     for meter, net in nets.items():
         _settle(program, job, clock, net, given(given(job, "positions", {}), meter, 0.0))
 
 
-def _limits(program: Program, job: Job, meter: str, document: dict[str, Any], net: list[Affine]) -> None:
-    """Hold a site or the fleet within its limits, today's in place of the fleet's."""
-    today = given(given(job, "limits", {}), meter)
-    for key, sign in (("export_limit_mw", 1.0), ("import_limit_mw", -1.0)):
+def _limits(program: Program, job: Job, document: dict[str, Any], members: list[Power], net: list[Affine]) -> None:
+    """Hold a site or the fleet (which has no id) within its limits, today's in place of the fleet's, with reserve.
+
+    Where both limits are 0 it is islanded: its reserve serves its own load and is not counted.
+    """
+    today = given(given(job, "limits", {}), given(document, "id", "fleet"))
+    limits = {}
+    for key in ("export_limit_mw", "import_limit_mw"):
         limit = given(today, key, given(document, key))
-        if limit is not None:
-            for expression, most in zip(net, series(limit, len(net)), strict=True):
-                program.at_most(expression * sign, most)
+        limits[key] = None if limit is None else series(limit, len(net))
+    exported, imported = limits["export_limit_mw"], limits["import_limit_mw"]
+    for t, expression in enumerate(net):
+        up = total(power.reserve.power("up", t) for power in members)
+        down = total(power.reserve.power("down", t) for power in members)
+        if exported is not None and imported is not None and exported[t] == 0 and imported[t] == 0:
+            up = down = Affine({})
+        if exported is not None:
+            program.at_most(expression + up, exported[t])
+        if imported is not None:
+            program.at_least(expression - down, -imported[t])
+
+
+def _lots(program: Program, document: dict[str, Any], net: list[Affine]) -> None:
+    """Make the net power of a site or the fleet a whole number of lots in every interval."""
+    lot = given(document, "lot_mw")
+    if lot is None:
+        return
+    for expression in net:
+        lots = program.integer(floor(program.smallest(expression) / lot), ceil(program.largest(expression) / lot))
+        program.equal(expression - lots * lot, 0.0)
 
 
 def _settle(program: Program, job: Job, clock: Clock, net: list[Affine], position: Any) -> None:

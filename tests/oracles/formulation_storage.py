@@ -10,12 +10,13 @@ s      energy in the store at the end of an interval, MWh; h hours per interval;
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from math import ceil
 from typing import Any
 
 from tests.oracles.formulation_clock import Clock, Job, fractions, given
 from tests.oracles.formulation_program import Affine, Program, total
+from tests.oracles.formulation_reserve import Reserve, add_reserve
 
 IDLE_MW = 1e-6
 ROUNDING = 1e-9
@@ -32,10 +33,25 @@ class Opening:
 
 @dataclass(frozen=True)
 class Power:
-    """Hold an asset's net power at its terminals, MW, positive = into the grid, and its standby load at the meter."""
+    """Hold an asset's net power at its terminals, MW, positive = into the grid, and its standby load at the meter.
+
+    `reserve` is what it holds of each product; `on` a generator's state in each interval.
+    """
 
     net: list[Affine]
     standby_load_mw: float
+    reserve: Reserve = field(default_factory=Reserve)
+    on: list[Affine] | None = None
+
+
+@dataclass(frozen=True)
+class Level:
+    """Hold the energy in a store at the start and the end of one interval, and the bounds of that interval, MWh."""
+
+    at_start: Affine
+    at_end: Affine
+    floor: float
+    ceiling: float
 
 
 def opening(job: Job, asset: dict[str, Any], clock: Clock) -> Opening:
@@ -70,7 +86,7 @@ def add_storage(program: Program, job: Job, asset: dict[str, Any], clock: Clock)
         left = [0.0] * len(clock) if start.stored_mwh is None else fractions(job, clock, asset["id"], direction)
         limits[direction] = [rated * fraction for fraction in left]
         least = given(asset, f"min_{direction}_mw", 0.0)
-        possible[direction] = [limit > 0 and limit >= least - ROUNDING for limit in limits[direction]]
+        possible[direction] = [limit > IDLE_MW and limit >= least - ROUNDING for limit in limits[direction]]
         lowered = [was or (fraction < 1.0 and rated > 0) for was, fraction in zip(lowered, left, strict=True)]
     power: dict[str, list[Affine]] = {}
     on: dict[str, list[Affine]] = {}
@@ -85,19 +101,23 @@ def add_storage(program: Program, job: Job, asset: dict[str, Any], clock: Clock)
     for t in range(len(clock)):
         program.at_most(on["charge"][t] + on["discharge"][t], 1.0)
     net = [d - c for d, c in zip(power["discharge"], power["charge"], strict=True)]
+    held = Reserve()
     if start.stored_mwh is not None:
-        _energy(program, job, asset, clock, start.stored_mwh, power)
+        levels = _energy(program, job, asset, clock, start.stored_mwh, power)
+        held = add_reserve(program, job, asset, clock, asset["charge_limit_mw"] + asset["discharge_limit_mw"])
+        _deliverable(program, asset, limits, net, levels, held)
     _cycles(program, job, asset, clock, power["discharge"])
     _ramps(program, asset, clock, start, net, lowered)
     _runs(program, job, asset, clock, start, on, possible)
     program.earn(total(power["discharge"]) * (-clock.hours * given(asset, "wear_cost_per_mwh", 0.0)))
-    return Power(net, given(asset, "standby_load_mw", 0.0))
+    return Power(net, given(asset, "standby_load_mw", 0.0), held)
 
 
 def _energy(
     program: Program, job: Job, asset: dict[str, Any], clock: Clock, stored: float, power: dict[str, list[Affine]]
-) -> None:
+) -> list[Level]:
     """Follow the energy in the store; hold it between its bounds and at or above its final target."""
+    levels = []
     kept = (1.0 - given(asset, "self_discharge_per_hour", 0.0)) ** clock.hours
     low, high = given(asset, "min_stored_mwh", 0.0), given(asset, "max_stored_mwh", asset["energy_capacity_mwh"])
     idle, level = stored, Affine({}, stored)
@@ -110,11 +130,41 @@ def _energy(
         gained = power["charge"][t] * asset["charge_efficiency"]
         lost = power["discharge"][t] * (1.0 / asset["discharge_efficiency"])
         program.equal(column - level * kept - (gained - lost) * clock.hours, 0.0)
+        levels.append(Level(level, column, floor, ceiling))
         level = column
     target = given(given(job, "targets", {}), asset["id"])
     least = given(target, "final_stored_mwh", min(stored, idle))
     program.at_least(level, least)
     program.earn(level.plus(-least) * given(target, "final_value_per_mwh", 0.0))
+    return levels
+
+
+def _deliverable(
+    program: Program,
+    asset: dict[str, Any],
+    limits: dict[str, list[float]],
+    net: list[Affine],
+    levels: list[Level],
+    held: Reserve,
+) -> None:
+    """Hold only reserve that power limits and the energy at the start and the end of each interval could serve."""
+    if not held.products:
+        return
+    for t, level in enumerate(levels):
+        program.at_most(net[t] + held.power("up", t), limits["discharge"][t])
+        program.at_least(net[t] - held.power("down", t), -limits["charge"][t])
+        drained = held.energy("up", t) * (1.0 / asset["discharge_efficiency"])
+        filled = held.energy("down", t) * asset["charge_efficiency"]
+        for stored in (level.at_start, level.at_end):
+            program.at_most(drained - stored, -level.floor)
+            if program.largest(stored) <= level.ceiling + ROUNDING:
+                program.at_most(filled + stored, level.ceiling)
+                continue
+            # The ceiling falls towards `max_stored_mwh` with what an idle store would lose: at the start of an
+            # interval the store may lie above the interval's own ceiling, and then holds nothing downwards.
+            holding, above = program.binary(), program.largest(stored) - level.ceiling
+            program.at_most(filled + stored + holding * above, level.ceiling + above)
+            program.at_most(filled - holding * program.largest(filled), 0.0)
 
 
 def _cycles(program: Program, job: Job, asset: dict[str, Any], clock: Clock, discharge: list[Affine]) -> None:
@@ -169,14 +219,14 @@ def _runs(
     for direction, states in on.items():
         before = Affine({}, 1.0 if was[direction] else 0.0)
         owed = max(0.0, run - start.intervals_in_state) if was[direction] else 0.0
-        for t in _unbroken(possible[direction], 0, ceil(owed - ROUNDING)):
+        for t in unbroken(possible[direction], 0, ceil(owed - ROUNDING)):
             program.at_least(states[t], 1.0)
         for t in range(count):
             # `begin` is at least 1 where a run begins, `end` where one has ended just before; neither earns anything.
             begin, end = program.column(0.0, 1.0), program.column(0.0, 1.0)
             program.at_least(begin - states[t] + before, 0.0)
             program.at_least(end - before + states[t], 0.0)
-            for later in _unbroken(possible[direction], t, run):
+            for later in unbroken(possible[direction], t, run):
                 program.at_least(states[later] - begin, 0.0)
             for later in range(t, min(t + rest, count)):
                 program.at_most(on["charge"][later] + on["discharge"][later] + end, 1.0)
@@ -193,7 +243,7 @@ def _runs(
             used = 0
 
 
-def _unbroken(possible: list[bool], first: int, length: int) -> list[int]:
+def unbroken(possible: list[bool], first: int, length: int) -> list[int]:
     """Return `length` intervals from `first` on, cut at the window's end and where the direction is impossible."""
     found: list[int] = []
     for t in range(first, min(first + length, len(possible))):

@@ -27,21 +27,25 @@ class Ground:
 
 def draw_commitments(draw: random.Random, clock: Clock, ground: Ground) -> list[Document]:
     """Return up to three commitments, each with at least one row."""
-    drafts = _Draft(draw, clock, ground)
+    drafts = CommitmentDraft(draw, clock, ground)
     drawn = [drafts.commitment(f"firm-{n + 1}") for n in range(draw.choice([0, 1, 1, 2, 2, 3]))]
     return [commitment for commitment in drawn if spans(commitment, clock)]
 
 
-class _Draft:
+class CommitmentDraft:
+    """Draw commitments on hours for stores and fixed loads."""
+
     def __init__(self, draw: random.Random, clock: Clock, ground: Ground) -> None:
         self.draw = draw
         self.clock = clock
         self.ground = ground
 
     def chance(self, probability: float) -> bool:
+        """Return true with a probability."""
         return self.draw.random() < probability
 
     def number(self, low: float, high: float, digits: int = 2) -> float:
+        """Return a rounded number between two."""
         return round(self.draw.uniform(low, high), digits)
 
     def border(self, index: int) -> str:
@@ -49,6 +53,7 @@ class _Draft:
         return self.clock.text(self.clock.starts[0] + index * self.clock.step)
 
     def commitment(self, commitment_id: str) -> Document:
+        """Return one commitment."""
         applies_to, members, each_alone = self._subject()
         count = len(self.clock)
         commitment: Document = {"id": commitment_id, "kind": "hours_at_least", "applies_to": applies_to}
@@ -77,7 +82,7 @@ class _Draft:
             commitment["each_day"] = True
             hours = 1 if self.chance(0.6) else hours
             if self.chance(0.6):
-                commitment["between"] = self._between()
+                commitment["between"] = self.wall_times()
         if self.chance(0.35):
             commitment["min_block_hours"] = self.draw.randint(1, hours + 1) * self.clock.hours
         commitment["hours"] = hours * self.clock.hours
@@ -117,7 +122,7 @@ class _Draft:
         members = self.draw.sample(self.ground.stores, self.draw.choice([1, 1, min(2, len(self.ground.stores))]))
         return {"assets": [a["id"] for a in members]}, members, True
 
-    def _between(self) -> list[str]:
+    def wall_times(self) -> list[str]:
         """Return whole hours around the local time of some interval; past midnight where that is late."""
         local = self.clock.starts[self.draw.randrange(len(self.clock))].astimezone(self.clock.zone)
         first = (local.hour - self.draw.randint(0, 2)) % 24

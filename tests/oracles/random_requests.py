@@ -38,10 +38,10 @@ def request(seed: int, *, assets: int | None = None, intervals: int | None = Non
     """
     draw = random.Random(seed)
     wanted = draw.random() < 0.7 if coupled is None else coupled
-    return _Draft(draw, assets or draw.randint(2, 5), intervals or draw.randint(6, 16), wanted).job()
+    return StorageDraft(draw, assets or draw.randint(2, 5), intervals or draw.randint(6, 16), wanted).job()
 
 
-class _Draft:
+class StorageDraft:
     """Draw the parts of one job in order; later parts look at earlier ones."""
 
     def __init__(self, draw: random.Random, stores: int, intervals: int, coupled: bool) -> None:

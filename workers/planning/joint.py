@@ -3,7 +3,7 @@
 A store that may charge and discharge at once is a relaxation of a store. It is solved first, with the binaries of
 `rules.exclusive_modes` only where mixing could pay, and among several stores with those as fractions at first. Where
 the answer mixes, a linear polish with every discrete choice and the modes fixed makes a schedule of it, often within
-the gap; if not, the binaries go in and the model is solved again from there. The quadratic part of a generator's cost
+the gap; if not, the binaries go in and the model is solved again. The quadratic part of a generator's cost
 is treated alike: tangents below it, the exact cost of what is found, more tangents there. A relaxation's bound is true,
 and an infeasible one proves the request infeasible.
 """
@@ -30,7 +30,7 @@ from workers.planning.limits import AUDIT_SHARE, Limits, Unwatched, Watch
 from workers.planning.rules import fuel_cost
 from workers.planning.solvers import cp_sat, highs
 from workers.planning.solvers.ending import Ending, Stopped
-from workers.planning.units import Booleans, Floats
+from workers.planning.units import Booleans
 
 INFINITE = float("inf")
 ROUNDS_BEFORE_WHOLE_STORES = 2
@@ -85,23 +85,23 @@ class _Search:
         self.build_seconds += perf_counter() - began
         return assembled
 
-    def solve(self, assembled: Assembled, start: Floats | None = None) -> Ending:
-        """Solve, and take over what is proven; `start` is a feasible point to begin from."""
+    def solve(self, assembled: Assembled) -> Ending:
+        """Solve, and take over what is proven."""
         if self.by == "cp_sat":
             ending = self._run_cp_sat(assembled)
         else:
-            ending = self._run(assembled.matrix, self._left(), self.watch, start)
+            ending = self._run(assembled.matrix, self._left(), self.watch)
         self.last = ending.stopped
         self.bound = min(self.bound, ending.bound)
         return ending
 
     def solve_near(self, assembled: Assembled) -> Ending:
         """Solve a model that is narrower than the request's: it may find a schedule, it proves nothing."""
-        return self._run(assembled.matrix, self._left(), self.watch, None, gap_share=GAP_SHARE_NEAR)
+        return self._run(assembled.matrix, self._left(), self.watch, gap_share=GAP_SHARE_NEAR)
 
     def _run_cp_sat(self, assembled: Assembled) -> Ending:
         """Solve over whole steps; the bound is the tighter one of that and of the LP relaxation, both true."""
-        relaxed = self._run(assembled.without_integers().matrix, self._left(), self.watch, None)
+        relaxed = self._run(assembled.without_integers().matrix, self._left(), self.watch)
         if relaxed.stopped is Stopped.INFEASIBLE:
             return relaxed
         ending = cp_sat.solve(assembled.matrix, self._effort(self._left()), self.watch)
@@ -119,7 +119,7 @@ class _Search:
 
     def keep(
         self, assembled: Assembled, ending: Ending, mixed: list[Booleans], *, has_loose_modes: bool = False
-    ) -> Floats | None:
+    ) -> None:
         """Make a schedule of what a model found and keep the best; also after time or patience ran out.
 
         Discrete choices and modes stay; powers are settled by an LP, with tangents at the outputs it finds until the
@@ -130,11 +130,10 @@ class _Search:
         if is_mixed or self._missing_cost(assembled, ending) > 0:
             polished = self._polish(assembled, ending, mixed)
         if polished is None or polished.values is None or polished.margin is None:
-            return None
+            return
         margin = polished.margin - self._missing_cost(assembled, polished)
         if self.margin is None or margin > self.margin:
             self.margin, self.plans = margin, plans_of(assembled.columns, polished.values)
-        return polished.values
 
     def _polish(self, assembled: Assembled, ending: Ending, mixed: list[Booleans]) -> Ending | None:
         """Give the best point of the LP that is left when everything discrete is fixed; None where there is none."""
@@ -143,7 +142,7 @@ class _Search:
         matrix, best = unmixed(assembled, ending.values, mixed), None
         for _ in range(MOST_TANGENT_ROUNDS):
             left = max(self._left(), self.limits.seconds * AUDIT_SHARE / 2)
-            found = self._run(matrix, left, Unwatched(), None)
+            found = self._run(matrix, left, Unwatched())
             if found.values is None or found.margin is None:
                 return best
             best = found
@@ -160,10 +159,8 @@ class _Search:
         columns, hours = assembled.columns, self.instance.hours
         return float(sum(fuel_cost.too_low(unit, ending.values, hours).sum() for unit in columns.generators))
 
-    def _run(
-        self, matrix: highs.Matrix, seconds: float, watch: Watch, start: Floats | None, *, gap_share: float = 1.0
-    ) -> Ending:
-        ending = highs.solve(matrix, self._effort(seconds, gap_share), watch, start)
+    def _run(self, matrix: highs.Matrix, seconds: float, watch: Watch, *, gap_share: float = 1.0) -> Ending:
+        ending = highs.solve(matrix, self._effort(seconds, gap_share), watch)
         self.solver_seconds += ending.seconds
         return ending
 
@@ -200,14 +197,13 @@ def solve_jointly(
     apart = [where | np.bool_(everywhere) for where in where_mixing_may_pay(instance)]
     search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds)
     assembled = search.assemble()
-    start = None
     if len(instance.units) > 1 and assembled.matrix.integer.any():
-        start = _first_schedule(search, assembled)
+        _first_schedule(search, assembled)
         if search.is_proven() or search.last is not Stopped.WITHIN_GAP:
             return search.solution()
     while True:
         search.rounds += 1
-        ending = search.solve(assembled, start)
+        ending = search.solve(assembled)
         if ending.values is None:
             return search.solution()
         mixed = mixed_modes(assembled.columns, ending.values)
@@ -216,7 +212,7 @@ def solve_jointly(
             return search.solution()
         if not search.tighten(assembled, ending, mixed):
             return search.solution()
-        assembled, start = search.assemble(), None
+        assembled = search.assemble()
 
 
 def solve_by_cp_sat(instance: Instance, limits: Limits, watch: Watch, *, seed: int, seconds: float) -> Solution:
@@ -234,28 +230,24 @@ def solve_by_cp_sat(instance: Instance, limits: Limits, watch: Watch, *, seed: i
     return search.solution()
 
 
-def _first_schedule(search: _Search, assembled: Assembled) -> Floats | None:
+def _first_schedule(search: _Search, assembled: Assembled) -> None:
     """Find a schedule near the LP relaxation: what is whole there stays, the few choices left are a small model.
 
-    The relaxation's bound is proven, and often enough; otherwise the schedule is where the exact solve starts. Where
-    what stays leaves no schedule, the modes as fractions give one.
+    The relaxation's bound is proven, and often enough; otherwise the schedule is what is in hand if time runs out.
+    Where what stays leaves no schedule, the modes as fractions give one.
     """
     relaxed = search.solve(assembled.without_integers())
     if relaxed.values is None:
-        return None
+        return
     near = search.solve_near(assembled.with_whole_fixed(relaxed.values))
     if near.values is not None:
-        mixed = mixed_modes(assembled.columns, near.values)
-        values = search.keep(assembled, near, mixed, has_loose_modes=True)
-        if values is not None:
-            return values
-    if not any(len(modes.columns) for modes in assembled.modes):
-        return None
+        search.keep(assembled, near, mixed_modes(assembled.columns, near.values), has_loose_modes=True)
+    if search.plans is not None or not any(len(modes.columns) for modes in assembled.modes):
+        return
     loose = assembled.with_modes_as_fractions()
     ending = search.solve(loose)
-    if ending.values is None:
-        return None
-    return search.keep(loose, ending, mixed_modes(loose.columns, ending.values), has_loose_modes=True)
+    if ending.values is not None:
+        search.keep(loose, ending, mixed_modes(loose.columns, ending.values), has_loose_modes=True)
 
 
 def is_within_gap(instance: Instance, margin: float, bound: float) -> bool:

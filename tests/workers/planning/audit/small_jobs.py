@@ -31,6 +31,34 @@ def load(name: str = "quay-cranes", **members: Any) -> Document:
     return {"id": name, "kind": "fixed_load", **members}
 
 
+def generator(name: str = "quay-g1", **members: Any) -> Document:
+    """Return a generator that runs between 1 and 4 MW at no cost."""
+    return {"id": name, "kind": "generator", "min_output_mw": 1.0, "max_output_mw": 4.0, **members}
+
+
+def renewable(name: str = "quay-pv", **members: Any) -> Document:
+    """Return a renewable that can be curtailed."""
+    return {"id": name, "kind": "renewable", **members}
+
+
+def flexible_load(name: str = "quay-pumps", **members: Any) -> Document:
+    """Return a load that draws up to 2 MW whenever it is told to."""
+    return {"id": name, "kind": "flexible_load", "draw_limit_mw": 2.0, **members}
+
+
+def product(name: str = "up-15", **members: Any) -> Document:
+    """Return a reserve product that is called upwards for 15 minutes and pays nothing."""
+    plain = {"direction": "up", "sustain_minutes": 15.0, "price_per_mw_per_hour": 0.0}
+    return {"id": name, **plain, **members}
+
+
+def outage(asset: str, first: int, end: int | None, left: float = 0.0) -> Document:
+    """Return an outage of the intervals from `first` up to, not including, `end`, at one hour each."""
+    until = None if end is None else f"2027-03-10T{end:02}:00:00Z"
+    begin = f"2027-03-10T{first:02}:00:00Z"
+    return {"asset": asset, "kind": "forced", "from": begin, "to": until, "available_fraction": left}
+
+
 def window(prices: Sequence[float] | None = None, **members: Any) -> Document:
     """Return hourly intervals at one price each, in UTC."""
     plain = {"start": START, "interval": "PT60M", "timezone": "UTC", "currency": "EUR", "price_basis": "forecast"}
@@ -64,6 +92,22 @@ def read(document: Document) -> OneWindow:
 def audit(document: Document, powers: Mapping[str, Sequence[float]]) -> Replay:
     """Audit powers by asset."""
     return replay(read(document), {name: Decision(power) for name, power in powers.items()})
+
+
+def one_generator(
+    power: Sequence[float], on: Sequence[bool] | None = None, *, asset: Document | None = None, **members: Any
+) -> Replay:
+    """Audit one generator, at a price of 0 in hourly intervals where nothing else is said."""
+    reserve = members.pop("reserve_mw", {})
+    market = members.pop("window", window([0.0] * len(power)))
+    plant = generator() if asset is None else asset
+    document = job([plant], market, **members)
+    return replay(read(document), {plant["id"]: Decision(power, on, reserve)})
+
+
+def audit_decisions(document: Document, decisions: Mapping[str, Decision]) -> Replay:
+    """Audit whole decisions by asset."""
+    return replay(read(document), decisions)
 
 
 def broken(result: Replay) -> list[str]:

@@ -8,8 +8,22 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from tests.workers.planning.audit.small_jobs import Document, audit, job, load, store, window
-from workers.planning.audit import Replay
+from tests.workers.planning.audit.small_jobs import (
+    Document,
+    audit,
+    broken,
+    flexible_load,
+    generator,
+    job,
+    load,
+    outage,
+    product,
+    read,
+    renewable,
+    store,
+    window,
+)
+from workers.planning.audit import Decision, Replay, replay
 
 NAMES = ("quay-b1", "quay-b2", "mole-b1", "mole-b2")
 HOURS = 6
@@ -116,4 +130,92 @@ def test_a_schedule_is_replayed_to_the_same_figures_from_its_own_powers() -> Non
     assert again.margin == first.margin
     assert again.assets == first.assets
     assert again.sites == first.sites
+    assert again.verification.violations == first.verification.violations
+
+
+def mixed(order: Sequence[int]) -> Document:
+    """Return a job with an asset of each kind, a commitment of each kind, reserve and lots."""
+    fleet: list[Document] = [
+        store("quay-b1", site="quay", wear_cost_per_mwh=3.0),
+        generator(
+            "quay-g1",
+            site="quay",
+            cost={"constant_per_hour": 5.0, "linear_per_mwh": 20.0, "quadratic_per_mw2h": 1.0},
+            start_costs=[{"after_hours_off": 0.0, "cost": 40.0}, {"after_hours_off": 2.0, "cost": 90.0}],
+            min_up_hours=2.0,
+            min_down_hours=2.0,
+            ramp_up_mw_per_hour=1.5,
+            ramp_down_mw_per_hour=1.0,
+        ),
+        renewable("mole-pv", cost_per_mwh=1.0),
+        flexible_load("quay-pumps", site="quay", min_draw_mw=0.5, interruptible=False),
+        load("quay-cranes", site="quay"),
+    ]
+    over: Document = {"group": ["quay-b1", "quay-g1"]}
+    short: Document = {"shortfall_price_per_mwh": 7.0}
+    return job(
+        [fleet[k] for k in order],
+        window(
+            [30.0, 31.0, -5.0, 60.0, 80.0, 20.0],
+            reserve_products=[
+                product(price_per_mw_per_hour=2.0, block_hours=2.0),
+                product("both", direction="symmetric", price_per_mw_per_hour=[1.0, 2.0, 3.0, 4.0, 5.0, 6.0]),
+            ],
+        ),
+        sites=[
+            {"id": "quay", "export_limit_mw": 3.0, "import_limit_mw": 2.0, "import_fee_per_mwh": 1.0, "lot_mw": 0.5}
+        ],
+        fleet={"lot_mw": 0.1},
+        forecasts={"quay-cranes": 0.4, "mole-pv": 1.7},
+        energy_needs={"quay-pumps": [{"energy_mwh": 2.0}]},
+        outages=[outage("quay-g1", 2, 4, 0.5), outage("mole-pv", 3, 4)],
+        commitments=[
+            {"id": "most", "kind": "hours_at_most", "applies_to": over, "threshold": {"mw": 1.0}, "hours": 3.0},
+            {"id": "firm", "kind": "firm_delivery", "applies_to": over, "power_mw": 0.5, **short},
+            {"id": "least", "kind": "energy_at_least", "applies_to": {"fleet": True}, "energy_mwh": 4.0},
+            {"id": "cap", "kind": "energy_at_most", "applies_to": {"site": "quay"}, "energy_mwh": 2.0, **short},
+            {"id": "spin", "kind": "reserve_holding", "applies_to": over, "product": "both", "power_mw": 0.5},
+        ],
+    )
+
+
+MIXED = ("quay-b1", "quay-g1", "mole-pv", "quay-pumps")
+RESERVE = st.lists(st.sampled_from([0.0, 0.5, 1.0]), min_size=HOURS, max_size=HOURS)
+
+
+def mixed_decisions(powers: tuple[list[float], ...], reserves: tuple[list[float], ...]) -> dict[str, Decision]:
+    held = [{"up-15": reserves[0]}, {"both": reserves[1], "up-15": reserves[0]}, {}, {}]
+    return {name: Decision(power, None, reserve) for name, power, reserve in zip(MIXED, powers, held, strict=True)}
+
+
+@settings(max_examples=60, deadline=None)
+@given(
+    powers=st.tuples(POWERS, POWERS, POWERS, POWERS),
+    reserves=st.tuples(RESERVE, RESERVE),
+    order=st.permutations(range(5)),
+)
+def test_of_all_kinds_order_does_not_matter_and_the_parts_add_up(
+    powers: tuple[list[float], ...], reserves: tuple[list[float], ...], order: list[int]
+) -> None:
+    decisions = mixed_decisions(powers, reserves)
+    one, other = (replay(read(mixed(places)), decisions) for places in (range(5), order))
+    assert other.margin == pytest.approx(one.margin, abs=1e-9)
+    assert other.verification.checks == one.verification.checks
+    assert Counter(broken(other)) == Counter(broken(one))
+    for result in (one, other):
+        parts = [asset.totals.model_dump() for asset in result.assets]
+        parts += [site.totals.model_dump() for site in result.sites]
+        parts.append(result.fleet.totals.model_dump())
+        for name, amount in result.totals.model_dump().items():
+            if name != "shortfall_cost":
+                assert sum(part.get(name, 0.0) for part in parts) == pytest.approx(amount, abs=1e-9)
+
+
+def test_of_all_kinds_a_schedule_is_replayed_to_the_same_figures_from_its_own_decisions() -> None:
+    powers = ([0.5] * 6, [1.0, 2.0, 1.5, 0.0, 0.0, 1.0], [1.7] * 6, [0.0, -1.0, -1.0, 0.0, 0.0, 0.0])
+    request = read(mixed(range(5)))
+    first = replay(request, mixed_decisions(powers, ([0.5] * 6, [0.0] * 6)))
+    own = {asset.id: Decision(asset.power_mw, asset.on, asset.reserve_mw) for asset in first.assets}
+    again = replay(request, own)
+    assert (again.margin, again.assets, again.sites) == (first.margin, first.assets, first.sites)
     assert again.verification.violations == first.verification.violations

@@ -155,7 +155,8 @@ def test_a_day_that_had_more_cycles_than_it_may_has_none_left_and_owes_none() ->
     before = {"assets": {"quay-b1": {"discharged_mwh": 50.0}}}
     assert broken(one_store([0.0, -1.0], asset=asset, counted_before=before)) == []
     found = only(one_store([0.25, 0.0], asset=asset, counted_before=before))
-    assert (found.rule, found.amount) == ("max_cycles_per_day", pytest.approx(0.25))
+    assert found.rule == "max_cycles_per_day"
+    assert found.amount == pytest.approx(0.25)
 
 
 def test_energy_out_over_energy_in_of_a_cyclic_schedule_is_the_product_of_both_efficiencies() -> None:
