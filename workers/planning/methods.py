@@ -14,6 +14,9 @@ from workers.planning.solvers.ending import Stopped
 LONGEST_SHARE = 4.0
 """A part may take up to so many times its even share of the time, so that one hard part cannot starve the rest."""
 
+CP_SAT_SHARE = 0.6
+"""Share of the time that CP-SAT has before the joint model is tried."""
+
 TIGHTER = 10.0
 SECOND_LOOKS = 3
 
@@ -45,7 +48,7 @@ class Found:
         fallen = sum(solution.fell_back for solution in self.solutions)
         if not fallen:
             return self.choice.why
-        return f"{self.choice.why}; {fallen} of them by milp: no exact powers for CP-SAT's choice over whole steps"
+        return f"{self.choice.why}; {fallen} of them by milp: CP-SAT left no exact schedule in its share of the time"
 
     @property
     def infeasible_parts(self) -> list[Instance]:
@@ -109,12 +112,12 @@ def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: b
 def _one_part(
     choice: Choice, number: int, limits: Limits, watch: Watch, *, seed: int, seconds: float, careful: bool
 ) -> Solution:
-    """Solve one part by the method chosen; what CP-SAT leaves without exact powers goes to the joint model."""
+    """Solve one part by the method chosen; where CP-SAT leaves no schedule in its share, the joint model has a go."""
     part = choice.parts[number]
     if choice.method == "cp_sat" and not careful:
         ends = limits.clock() + seconds
-        found = solve_by_cp_sat(part, limits, watch, seed=seed, seconds=seconds)
-        if found.plans is not None or found.stopped is not Stopped.WITHIN_GAP:
+        found = solve_by_cp_sat(part, limits, watch, seed=seed, seconds=seconds * CP_SAT_SHARE)
+        if found.plans is not None or found.stopped is Stopped.INFEASIBLE or watch.is_stop_asked():
             return found
         joint = solve_jointly(part, limits, watch, seed=seed, seconds=ends - limits.clock())
         return replace(_better(found, joint), fell_back=True)
