@@ -20,6 +20,7 @@ _TIE = """
 import ctypes, os, signal, sys
 parent, number, *command = sys.argv[1:]
 signal.pthread_sigmask(signal.SIG_SETMASK, ())
+os.setpgid(0, 0)
 PR_SET_PDEATHSIG = 1
 if ctypes.CDLL(None).prctl(PR_SET_PDEATHSIG, int(number)) != 0 or os.getppid() != int(parent):
     os._exit(1)
@@ -31,7 +32,8 @@ def tied(command: Sequence[str], number: signal.Signals) -> list[str]:
     """Return a command line that becomes this command, hears all signals, and gets this one when its parent dies.
 
     Linux, prctl(2): the wish survives the start of another program. Done in a small program of its own, not between
-    fork and exec in this process, which may have threads.
+    fork and exec in this process, which may have threads. It leaves the process group of its parent: an interrupt from
+    the terminal is for the parent, which ends its children in their order, Redis last.
     """
     return [sys.executable, "-I", "-S", "-c", _TIE, str(os.getpid()), str(int(number)), *command]
 

@@ -4,33 +4,16 @@ import argparse
 import os
 import sys
 from collections.abc import Sequence
+from datetime import datetime
 from importlib.metadata import version
+from pathlib import Path
 
 from schemas.cautions import CAUTIONS
+from schemas.records import QUEUES
+from service.command_help import DEMO_HELP, KEEP_HELP, PLAN_HELP, SERVE_HELP, UP_HELP, WORK_HELP
 
 INTERRUPTED, NOBODY_READS = 130, 141
 """What a shell reports for SIGINT and SIGPIPE."""
-
-PLAN_HELP = """\
-Plan one request, a job as JSON with its fleet and window inline, without a service. Standard output carries one JSON
-document: the schedule, the diagnosis, or what is wrong with the request; standard error has it in a line for a person.
-
-exit status:
-  0    a schedule that passed the audit (or, of a task `check`, one without a violation)
-  1    a fault of ours, not of the request
-  2    not taken: the file cannot be read, is no JSON, breaks a rule or asks for what is not done yet
-  3    it cannot be met, and why (or, of a task `check`, a schedule with violations)
-  4    undecided: time ran out with neither a schedule nor a proof that there is none
-"""
-
-DEMO_HELP = """\
-Plan the day of an invented co-operative of batteries and print it for a person to read; then the same day after a trip
-that no schedule can meet, and why. It takes a few seconds.
-
-exit status:
-  0    the first day has a schedule in which everything holds, and the second is proven impossible
-  1    something did not hold; it is named
-"""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -76,10 +59,64 @@ def _parser() -> argparse.ArgumentParser:
     )
     plan.set_defaults(run=_plan)
     demo = commands.add_parser(
-        "demo", help="plan an invented fleet and print it", description=DEMO_HELP, formatter_class=as_written
+        "demo",
+        help="start a service, have an invented fleet planned and print it",
+        description=DEMO_HELP,
+        formatter_class=as_written,
+    )
+    demo.add_argument(
+        "--out",
+        metavar="DIR",
+        type=Path,
+        help="a new or empty folder for the answers (default: hourwright-demo- and the time, in the current folder)",
     )
     demo.set_defaults(run=_demo)
+    _add_up(commands)
+    _add_processes(commands)
     return parser
+
+
+def _add_up(commands: "argparse._SubParsersAction[argparse.ArgumentParser]") -> None:
+    up = commands.add_parser(
+        "up",
+        help="run everything on one machine, Redis included",
+        description=UP_HELP,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    up.add_argument(
+        "--data", metavar="DIR", type=Path, required=True, help="folder of this deployment; made if need be"
+    )
+    up.add_argument("--host", default="127.0.0.1", help="address to listen at (default: %(default)s)")
+    up.add_argument("--port", metavar="N", type=_port, default=8080, help="port to listen at (default: %(default)s)")
+    up.add_argument(
+        "--workers",
+        metavar="K",
+        type=_at_least_one,
+        default=1,
+        help="jobs planned at a time, besides one urgent one (default: %(default)s)",
+    )
+    up.add_argument("--no-auth", action="store_true", help="ask nobody for a key; on a loopback address only")
+    up.add_argument(
+        "--sample",
+        action="store_true",
+        help="store invented fleets and windows and print a command for each job to try",
+    )
+    up.set_defaults(run=_up)
+
+
+def _add_processes(commands: "argparse._SubParsersAction[argparse.ArgumentParser]") -> None:
+    told = (
+        ("serve", "run the API alone", SERVE_HELP),
+        ("work", "run one worker", WORK_HELP),
+        ("keep", "run the keeper", KEEP_HELP),
+    )
+    for name, line, words in told:
+        process = commands.add_parser(
+            name, help=line, description=words, formatter_class=argparse.RawDescriptionHelpFormatter
+        )
+        process.set_defaults(run=_become)
+        if name == "work":
+            process.add_argument("--queue", choices=QUEUES, help="the queue to serve, whatever HOURWRIGHT_QUEUE says")
 
 
 # What one command needs is imported when it is asked for: no command waits for what only another one uses.
@@ -91,13 +128,40 @@ def _plan(given: argparse.Namespace) -> int:
     return plan_command.plan(given.file, given.threads)
 
 
-def _demo(_given: argparse.Namespace) -> int:
-    from service.demo import running
+def _demo(given: argparse.Namespace) -> int:
+    from service.demo import over_http
 
-    return running.run(sys.stdout)
+    return over_http.demo(sys.stdout, given.out, datetime.now().astimezone())
+
+
+def _up(given: argparse.Namespace) -> int:
+    from service import up
+
+    wish = up.Wish(
+        given.data,
+        host=given.host,
+        port=given.port,
+        workers=given.workers,
+        no_auth=given.no_auth,
+        sample=given.sample,
+    )
+    return up.up(wish)
+
+
+def _become(given: argparse.Namespace) -> int:
+    from service.processes import become
+
+    chosen = {} if getattr(given, "queue", None) is None else {"HOURWRIGHT_QUEUE": given.queue}
+    become(given.command, {**os.environ, **chosen})
 
 
 def _at_least_one(text: str) -> int:
     if not text.isascii() or not text.isdigit() or not 1 <= int(text) <= 1024:
         raise argparse.ArgumentTypeError(f"a whole number from 1 to 1024 is expected, not {text!r}")
+    return int(text)
+
+
+def _port(text: str) -> int:
+    if not text.isascii() or not text.isdigit() or not 1 <= int(text) <= 65535:
+        raise argparse.ArgumentTypeError(f"a whole number from 1 to 65535 is expected, not {text!r}")
     return int(text)

@@ -3,14 +3,19 @@
 import rq.serializers
 from redis import Redis
 from redis.backoff import ExponentialWithJitterBackoff
+from redis.exceptions import ConnectionError as NoConnection
 from redis.retry import Retry
 from rq.defaults import RQ_KEY_PREFIX
 
 from schemas.records import rq_prefix
 
-ANSWER_SECONDS = 5.0
+ANSWER_SECONDS = 2.0
 CONNECT_SECONDS = 1.0
 RETRIES = 2
+"""For connections that are refused or were cut, as after a restart. A Redis that is silent is not asked a second time:
+
+the caller would wait once more for nothing, and what was asked may have been done already.
+"""
 
 
 class WrongPrefix(RuntimeError):  # noqa: N818 - says what it is
@@ -34,7 +39,7 @@ def connect(url: str, password: str | None = None) -> "Redis":
         password=password,
         socket_timeout=ANSWER_SECONDS,
         socket_connect_timeout=CONNECT_SECONDS,
-        retry=Retry(ExponentialWithJitterBackoff(cap=0.2, base=0.02), RETRIES),
+        retry=Retry(ExponentialWithJitterBackoff(cap=0.2, base=0.02), RETRIES, (NoConnection,)),
         decode_responses=False,
         protocol=2,
     )

@@ -30,6 +30,7 @@ class Settings(BaseSettings):
     port: int = Field(default=8080, ge=0, le=65535)
     allowed_hosts: Annotated[tuple[str, ...], NoDecode] = Field(default=(), description="Between commas; none: any")
     trusted_proxy: str | None = None
+    no_auth: bool = Field(default=False, description="Serve without API keys, which is all that this version can do")
     http_threads: int = Field(default=64, ge=4, le=1024)
     drain_seconds: float = Field(default=30.0, ge=0, le=3600)
 

@@ -11,10 +11,13 @@ from ipaddress import ip_address
 from pathlib import Path
 from time import monotonic
 
+from service.calling import Api, NotReached, url_of
 from service.children import Child
+from service.command_help import OPEN_ON_LOOPBACK_ONLY
 from service.embedded_redis import DataFolder, DataInUse, EmbeddedRedis, RedisDidNotStart
 from service.processes import Process, command_of, environment_of
 from service.redis_server import NoRedisServer, find_server
+from service.sample.loading import NotTaken, load
 
 log = logging.getLogger(__name__)
 
@@ -24,26 +27,14 @@ DRAIN_SECONDS = 5.0
 STOP_SECONDS = 15.0
 """What children have to end, the workers' grace included; then they are killed, and Redis ends last."""
 
+SAMPLE_SECONDS = 5.0
+"""So long each document of the sample may take."""
+
 EARLY_FAILURES = 4
 """A child that ends early so often in a row, before the API has answered once, will not get better by itself."""
 
-OPEN_ON_LOOPBACK_ONLY = (
-    "this version has no API keys yet: anyone who can reach the port can use the service, so it runs with --no-auth, "
-    "on a loopback address, and not otherwise"
-)
-UP_HELP = f"""\
-Run everything on one machine until told to stop: a Redis of its own (files in DIR, an append-only file, a socket only
-this user can reach, no port), the API, a keeper, workers, and one more worker for urgent jobs. What was accepted is
-kept in DIR and goes on at the next start; a job that is being planned at a stop has {GRACE_SECONDS:g} s to end, and is
-then planned anew.
-
-{OPEN_ON_LOOPBACK_ONLY[0].upper()}{OPEN_ON_LOOPBACK_ONLY[1:]}.
-
-exit status:
-  0    stopped by SIGTERM or SIGINT
-  1    Redis or one of the processes would not start; standard error says which and why
-  2    cannot run as asked: DIR is in use, no redis-server was found, or others could reach the port
-"""
+PASSWORD = "HOURWRIGHT_REDIS_PASSWORD_FILE"
+"""Of another Redis: the embedded one has none, and refuses whoever gives one."""
 
 LOG_FORMAT = "%(asctime)s %(levelname)s %(name)s: %(message)s"
 
@@ -61,11 +52,23 @@ class Wish:
     port: int = 8080
     workers: int = 1
     no_auth: bool = False
+    sample: bool = False
 
     def require_safe(self) -> None:
         """Raise CannotRun for what would leave the service open to others."""
         if not self.no_auth or not _is_loopback(self.host):
             raise CannotRun(OPEN_ON_LOOPBACK_ONLY)
+
+    def require_free_port(self) -> None:
+        """Raise CannotRun where something else listens already: its answers would be taken for ours."""
+        try:
+            family, kind, _, _, address = socket.getaddrinfo(self.host, self.port, type=socket.SOCK_STREAM)[0]
+            with socket.socket(family, kind) as tried:
+                tried.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)  # as the API will: for ports just left
+                tried.bind(address)
+        except OSError as fault:
+            where = f"{self.host}, port {self.port}"
+            raise CannotRun(f"cannot listen at {where}: {fault.strerror or fault}; --port takes another") from fault
 
 
 def up(wish: Wish) -> int:
@@ -74,9 +77,10 @@ def up(wish: Wish) -> int:
     data = DataFolder(wish.data)
     try:
         wish.require_safe()
+        wish.require_free_port()
         server = find_server()
         data.hold()
-    except (CannotRun, NoRedisServer, DataInUse) as refusal:
+    except (CannotRun, NoRedisServer, DataInUse, OSError) as refusal:
         print(f"hourwright up: {refusal}", file=sys.stderr)
         return 2
     log.info("Redis: %s", server)
@@ -101,6 +105,7 @@ class _Household:
         self._wish = wish
         self._redis = redis
         self._answers = False
+        self._lacks_sample = wish.sample
         self._children = _children(wish, redis.url, os.environ)
 
     def run(self) -> int:
@@ -110,7 +115,9 @@ class _Household:
         while (heard := _heard(TICK_SECONDS)) not in (signal.SIGTERM, signal.SIGINT):
             if heard is None and not self._answers and _listens(self._wish.host, self._wish.port):
                 self._answers = True
-                print(f"Hourwright answers at http://{self._wish.host}:{self._wish.port}", flush=True)
+                print(f"Hourwright answers at {url_of(self._wish.host, self._wish.port)}", flush=True)
+            if self._answers and self._lacks_sample:
+                self._load_sample()
             self._look_after()
             if not self._answers and any(child.failures_in_a_row >= EARLY_FAILURES for child in self._children):
                 names = ", ".join(child.name for child in self._children if child.failures_in_a_row)
@@ -127,6 +134,15 @@ class _Household:
         for child in self._children:
             child.look_after()
 
+    def _load_sample(self) -> None:
+        try:
+            lines = list(load(Api(self._wish.host, self._wish.port, SAMPLE_SECONDS)))
+        except (NotReached, NotTaken) as fault:
+            log.warning("the sample is not loaded yet: %s", fault)
+            return
+        self._lacks_sample = False
+        print("\n".join(lines), flush=True)
+
     def _stop(self) -> None:
         log.info("stopping: running jobs have %g s to end, then they go back to their queue", GRACE_SECONDS)
         for child in self._children:
@@ -141,10 +157,11 @@ def _children(wish: Wish, redis_url: str, surroundings: Mapping[str, str]) -> li
     common = {
         "HOURWRIGHT_GRACE_SECONDS": str(GRACE_SECONDS),
         "HOURWRIGHT_DRAIN_SECONDS": str(DRAIN_SECONDS),
-        **surroundings,
+        **{name: value for name, value in surroundings.items() if name.upper() != PASSWORD},
         "HOURWRIGHT_REDIS_URL": redis_url,
         "HOURWRIGHT_HOST": wish.host,
         "HOURWRIGHT_PORT": str(wish.port),
+        "HOURWRIGHT_NO_AUTH": str(wish.no_auth).lower(),
     }
 
     def child(name: str, process: Process, **own: str) -> Child:

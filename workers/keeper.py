@@ -20,8 +20,7 @@ from rq.worker_registration import clean_worker_registry
 
 from schemas.records import QUEUES, TASK, URGENT_QUEUE, Keys, carried_job, carrier_name, carrier_options
 from workers import scripts
-from workers.leases import Leases
-from workers.worker import LEASE_SECONDS
+from workers.leases import LEASE_SECONDS, Leases
 
 log = logging.getLogger(__name__)
 

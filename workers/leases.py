@@ -3,6 +3,9 @@
 from collections.abc import Callable, Mapping
 from time import monotonic
 
+LEASE_SECONDS = 8
+"""So long a worker is taken for alive without a heartbeat; it sends one every 2 seconds."""
+
 
 class Leases:
     """Remembers when each heartbeat last changed.

@@ -22,11 +22,11 @@ from rq.worker.base import WorkerStatus
 from schemas.records import Keys, carried_job
 from workers import scripts
 from workers.attempts import Attempt
+from workers.leases import LEASE_SECONDS
 from workers.parent_death import die_with_parent
 from workers.settings import Settings
 from workers.tasks import OVERRUN_SECONDS, SURROUNDINGS, Surroundings
 
-LEASE_SECONDS = 8
 HEARTBEAT_SECONDS = 2
 WORKER_TTL_SECONDS = 17
 """RQ blocks on its queue for 15 s less than that."""

@@ -1,34 +1,83 @@
-"""Ask the planner. Where the answer comes from is known in this module only."""
+"""Ask the service, as any caller would, and keep every document that it gives."""
 
 import json
-import subprocess
+import re
+from time import monotonic
 from typing import Any
 
-from service.plan_command import planner_command
+from service.calling import Answered, Api, NotReached
+from service.demo.folder import Folder
 
-ANSWERED = {0, 3, 4}
-"""Exit statuses of `hourwright plan` with which an answer is printed; any other is a refusal or a fault."""
+WAIT = "wait=30"
+LIVE = ("queued", "running", "cancelling")
+SECONDS_ABOVE_THE_TIME_LIMIT = 60.0
 
 
 class NoAnswerError(Exception):
-    """The planner gave no answer; carries its exit status and what it had to say."""
+    """The service gave no answer to a job; says what was asked and what came instead."""
 
-    def __init__(self, status: int, words: str) -> None:
-        super().__init__(status, words)
-        self.status = status
+    def __init__(self, asked: str, words: str) -> None:
+        super().__init__(asked, words)
+        self.asked = asked
         self.words = words
 
     def __str__(self) -> str:
-        return f"the planner gave no answer (exit status {self.status}): {self.words.strip() or 'it said nothing'}"
+        return f"no answer to {self.asked}: {self.words.strip() or 'nothing was said'}"
 
 
-def answer(job: dict[str, Any]) -> dict[str, Any]:
-    """Return the answer document to a job document: a schedule, a diagnosis, or that time ran out.
+class Answering:
+    """Submits jobs one after the other; what is kept bears the job's label."""
 
-    Raises NoAnswerError where there is none.
-    """
-    done = subprocess.run(planner_command("-"), input=json.dumps(job).encode(), capture_output=True, check=False)
-    if done.returncode not in ANSWERED:
-        raise NoAnswerError(done.returncode, done.stderr.decode(errors="replace"))
-    document: dict[str, Any] = json.loads(done.stdout)
-    return document
+    def __init__(self, api: Api, folder: Folder) -> None:
+        self._api = api
+        self._folder = folder
+
+    def answer(self, job: dict[str, Any]) -> dict[str, Any]:
+        """Return the answer document to a job document: a schedule, a diagnosis, or that time ran out.
+
+        Raises NoAnswerError where there is none.
+        """
+        record = self._ended(job)
+        name = _name(str(record["label"]))
+        links = record["links"]
+        self._kept(links["request"], f"{name}-request.json")
+        self._kept(links["self"], f"{name}-job.json")
+        if links["schedule"] is not None:
+            self._kept(links["schedule"], f"{name}-schedule.csv", "text/csv")
+            found = self._kept(links["schedule"], f"{name}-schedule.json")
+        elif links["diagnosis"] is not None:
+            found = self._kept(links["diagnosis"], f"{name}-diagnosis.json")
+        else:
+            raise NoAnswerError(f"job {record['id']}", f"it is {record['state']}: {record['error']}")
+        document: dict[str, Any] = json.loads(found)
+        return document
+
+    def _ended(self, job: dict[str, Any]) -> dict[str, Any]:
+        """Submit a job and give its record when it has ended."""
+        record = self._asked(202, "POST", "/v1/jobs", job, Prefer=WAIT).document
+        until = monotonic() + float(job["time_limit_seconds"]) + SECONDS_ABOVE_THE_TIME_LIMIT
+        while record["state"] in LIVE:
+            if monotonic() > until:
+                raise NoAnswerError(f"job {record['id']}", f"it is still {record['state']}")
+            record = self._asked(200, "GET", record["links"]["self"], Prefer=WAIT).document
+        return dict(record)
+
+    def _kept(self, path: str, name: str, media: str = "application/json") -> bytes:
+        body = self._asked(200, "GET", path, Accept=media).body
+        self._folder.keep(name, body)
+        return body
+
+    def _asked(self, expected: int, method: str, path: str, document: object = None, **headers: str) -> Answered:
+        try:
+            answered = self._api.ask(method, path, document, **headers)
+        except NotReached as fault:
+            raise NoAnswerError(f"{method} {path}", str(fault)) from fault
+        if answered.status != expected:
+            raise NoAnswerError(
+                f"{method} {path}", f"status {answered.status}: {answered.body.decode(errors='replace')}"
+            )
+        return answered
+
+
+def _name(label: str) -> str:
+    return re.sub(r"[^a-z0-9]+", "-", label.lower()).strip("-")

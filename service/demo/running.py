@@ -1,63 +1,31 @@
 """Run the demo: ask, print for a person, and tell whether everything held."""
 
-import textwrap
-from collections.abc import Callable, Iterable
-from typing import Any, TextIO
+from collections.abc import Callable
+from typing import Any
 
 from schemas.diagnosis import Diagnosis
 from schemas.job import ScheduleJob
 from schemas.reading import read_job
 from schemas.schedule import Schedule
-from service.demo import answering, expectations, scenario
+from service.demo import expectations, scenario
+from service.demo.answering import NoAnswerError
 from service.demo.commitments_text import commitments_text, notes_text
 from service.demo.day_strip import LEGEND
 from service.demo.diagnosis_text import diagnosis_text, outages_text
 from service.demo.money_text import money_text
+from service.demo.page import Page
 from service.demo.power_text import assets_text, meters_text, peak_text, prices_text, standby_text
 from service.demo.proof_text import assumptions_text, proof_text
-
-WIDTH = 100
 
 Document = dict[str, Any]
 Answering = Callable[[Document], Document]
 
 
-class Page:
-    """Prints paragraphs and tables of 100 columns, in whatever the stream can write."""
-
-    def __init__(self, stream: TextIO) -> None:
-        self._stream = stream
-
-    def title(self, text: str) -> None:
-        """Print a line that stands out."""
-        self._print([f"== {text} ".ljust(WIDTH, "=")])
-
-    def heading(self, text: str) -> None:
-        """Print the head of a part."""
-        self._print(["", text.upper()])
-
-    def words(self, *paragraphs: str) -> None:
-        """Print paragraphs, broken into lines."""
-        for paragraph in paragraphs:
-            self._print(textwrap.wrap(paragraph, WIDTH, subsequent_indent="  " if paragraph.startswith("- ") else ""))
-
-    def table(self, lines: Iterable[str]) -> None:
-        """Print lines as they are."""
-        self._print(line.rstrip() for line in lines)
-
-    def _print(self, lines: Iterable[str]) -> None:
-        encoding = self._stream.encoding or "ascii"
-        for line in lines:
-            print(line.encode(encoding, "backslashreplace").decode(encoding), file=self._stream)
-        self._stream.flush()
-
-
-def run(stream: TextIO, answer: Answering = answering.answer) -> int:
+def run(page: Page, answer: Answering) -> int:
     """Plan both days of the scenario and print them; return 0 only if everything held, 1 with the reasons otherwise."""
-    page = Page(stream)
     try:
         faults = [*_evening(page, answer), *_tripped(page, answer)]
-    except answering.NoAnswerError as fault:
+    except NoAnswerError as fault:
         faults = [str(fault)]
     page.title("everything held" if not faults else "NOT EVERYTHING HELD")
     if faults:

@@ -115,8 +115,6 @@ class NotYet(Answer):
 
     tasks: list[str]
     methods: list[str]
-    asset_kinds: list[str]
-    commitment_kinds: list[str]
 
 
 class VersionDocument(Answer):

@@ -44,8 +44,6 @@ class Status:
             not_yet=NotYet(
                 tasks=sorted(support.UNSUPPORTED_TASKS),
                 methods=sorted(support.UNSUPPORTED_METHODS),
-                asset_kinds=sorted(support.UNSUPPORTED_ASSET_KINDS),
-                commitment_kinds=sorted(support.UNSUPPORTED_COMMITMENT_KINDS),
             ),
             libraries={"python": platform.python_version()} | {name: version(name) for name in _LIBRARIES},
         )

@@ -62,20 +62,6 @@ def test_a_plain_request_asks_for_nothing_that_is_not_offered() -> None:
                 "/initial_from_job_id",
                 "/callback",
                 "/explain_commitments",
-                "/fleet/lot_mw",
-                "/fleet/sites/0/lot_mw",
-                "/fleet/assets/0/reserve_products",
-                "/fleet/assets/1/kind",
-                "/fleet/assets/1/reserve_products",
-                "/fleet/assets/2/kind",
-                "/fleet/assets/3/kind",
-                "/window/reserve_products",
-                "/commitments/2/kind",
-                "/commitments/3/kind",
-                "/commitments/4/kind",
-                "/commitments/5/kind",
-                "/commitments/6/kind",
-                "/commitments/7/kind",
             },
         ),
         ("commitment_costs", {"/task", "/fleet_id", "/window_id"}),
@@ -95,7 +81,7 @@ def test_what_is_not_offered_is_refused_by_name(task: str, expected: set[str]) -
         with_put(full(task), fault.pointer, None)
 
 
-@pytest.mark.parametrize("method", ["cp_sat", "coordinated"])
+@pytest.mark.parametrize("method", ["coordinated"])
 def test_a_method_that_is_not_offered_is_refused(method: str) -> None:
     with pytest.raises(Unsupported) as refused:
         require_supported(read_job({**plain(), "method": method}))

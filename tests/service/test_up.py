@@ -16,7 +16,8 @@ from typing import Any
 
 import pytest
 
-from service.up import OPEN_ON_LOOPBACK_ONLY, CannotRun, Wish
+from service.command_help import OPEN_ON_LOOPBACK_ONLY
+from service.up import CannotRun, Wish
 from tests.faults import jobs
 from tests.faults.deployment import is_gone
 

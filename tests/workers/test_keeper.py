@@ -17,7 +17,7 @@ from tests.faults.clocks import HandClock
 from tests.faults.deployment import Deployment
 from workers.attempts import claim
 from workers.keeper import LOCK_SECONDS, ON_THE_WAY_SECONDS, Keeper
-from workers.worker import LEASE_SECONDS
+from workers.leases import LEASE_SECONDS
 
 
 @pytest.fixture

@@ -10,7 +10,8 @@ from rq import Queue
 
 from tests.faults.deployment import Deployment
 from workers.settings import Settings
-from workers.worker import LEASE_SECONDS, PlanningWorker, how_it_ended
+from workers.leases import LEASE_SECONDS
+from workers.worker import PlanningWorker, how_it_ended
 
 
 @pytest.fixture

@@ -208,6 +208,16 @@ def tangents_needed(columns: FleetColumns, values: Floats, hours: float) -> list
     return found
 
 
+def tangents_at(columns: FleetColumns, values: Floats) -> list[Tangents]:
+    """Give tangents at every output of a schedule: there the model's fuel cost cannot be too low again."""
+    found = []
+    for number, unit in enumerate(columns.generators):
+        where = np.flatnonzero(values[unit.output] > 0)
+        if unit.squared is not None and len(where):
+            found.append(Tangents(number, where, values[unit.output[where]]))
+    return found
+
+
 def with_tangents(assembled: Assembled, matrix: highs.Matrix, tangents: Sequence[Tangents]) -> highs.Matrix:
     """Add tangent rows to a matrix."""
     extra = Model()

@@ -20,6 +20,7 @@ from workers.planning.assembly import (
     assemble,
     mixed_modes,
     plans_of,
+    tangents_at,
     tangents_needed,
     unmixed,
     where_mixing_may_pay,
@@ -36,8 +37,8 @@ INFINITE = float("inf")
 ROUNDS_BEFORE_WHOLE_STORES = 2
 MOST_ROUNDS = 12
 MOST_TANGENT_ROUNDS = 12
-EXACT_ENOUGH = 1e-9
-"""Share of the margin by which the model's fuel cost may miss the true one."""
+EXACT_ENOUGH = 1e-11
+"""Share of the margin by which the model's fuel cost may miss the true one: outputs are flat in it, to some kW."""
 
 GAP_SHARE_NEAR = 0.5
 """A model near the LP relaxation is solved to this share of the gap: what it loses to the bound comes on top."""
@@ -134,6 +135,8 @@ class _Search:
         margin = polished.margin - self._missing_cost(assembled, polished)
         if self.margin is None or margin > self.margin:
             self.margin, self.plans = margin, plans_of(assembled.columns, polished.values)
+        # the relaxation's own outputs lie where its tangents cross, far from these: it takes many rounds to get here
+        self.tangents += tangents_at(assembled.columns, polished.values)
 
     def _polish(self, assembled: Assembled, ending: Ending, mixed: list[Booleans]) -> Ending | None:
         """Give the best point of the LP that is left when everything discrete is fixed; None where there is none."""

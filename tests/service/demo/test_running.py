@@ -1,52 +1,27 @@
 """The demo as a person sees it, and each way in which it must fail."""
 
 import copy
-import os
 import re
-import subprocess
-import sys
 from collections.abc import Callable
 from io import BytesIO, TextIOWrapper
 from math import fsum
-from typing import Any
 
 import pytest
 
 from schemas.cautions import CAUTIONS
-from service.demo import answering, running, scenario
+from service.demo import running, scenario
+from service.demo.answering import NoAnswerError
+from service.demo.page import Page
+from tests.service.demo.conftest import Answers, Document
 
-PATIENCE_SECONDS = 180
 WIDTH = 100
-Document = dict[str, Any]
-Answers = dict[str, Document]
-
-
-@pytest.fixture(scope="module")
-def printed() -> str:
-    """Run the whole demo in the plainest of locales; return what it printed."""
-    done = subprocess.run(
-        [sys.executable, "-I", "-m", "service", "demo"],
-        capture_output=True,
-        env={"LANG": "C", "LC_ALL": "C", "PATH": os.environ["PATH"]},
-        timeout=PATIENCE_SECONDS,
-        check=False,
-    )
-    assert (done.returncode, done.stderr) == (0, b"")
-    return done.stdout.decode("ascii")
-
-
-@pytest.fixture(scope="module")
-def answers() -> Answers:
-    """Ask the planner the demo's two questions once."""
-    asked = (scenario.evening_request(), scenario.tripped_request())
-    return {request["label"]: answering.answer(request) for request in asked}
 
 
 def shown(answers: Answers, encoding: str = "ascii") -> tuple[int, str]:
     """Print the demo with answers that are already there; return its status and what it printed."""
     buffer = BytesIO()
     stream = TextIOWrapper(buffer, encoding=encoding)
-    status = running.run(stream, lambda request: copy.deepcopy(answers[request["label"]]))
+    status = running.run(Page(stream), lambda request: copy.deepcopy(answers[request["label"]]))
     stream.flush()
     return status, buffer.getvalue().decode(encoding)
 
@@ -240,16 +215,12 @@ def test_letters_that_the_stream_cannot_write_are_spelt_out(answers: Answers) ->
     assert "Gr\u00f6\u00dfe \u2265 8 h" in shown(foreign, "utf-8")[1]
 
 
-def test_a_planner_without_an_answer_is_a_failure_with_its_words() -> None:
-    wrong = {**scenario.evening_request(), "colour": "red"}
-    with pytest.raises(answering.NoAnswerError, match=r"exit status 2\): /colour: "):
-        answering.answer(wrong)
-
+def test_a_question_without_an_answer_is_a_failure_with_its_words() -> None:
     def refused(_request: Document) -> Document:
-        raise answering.NoAnswerError(1, "a fault of ours")
+        raise NoAnswerError("POST /v1/jobs", "status 500: a fault of ours")
 
     buffer = BytesIO()
     stream = TextIOWrapper(buffer, encoding="ascii")
-    assert running.run(stream, refused) == 1
+    assert running.run(Page(stream), refused) == 1
     stream.flush()
-    assert b"a fault of ours" in buffer.getvalue()
+    assert b"no answer to POST /v1/jobs: status 500: a fault of ours" in buffer.getvalue()

@@ -100,9 +100,8 @@ def test_what_this_version_does_not_plan_is_refused_by_name_at_what_was_sent(hou
     answered = house.call("POST", "/v1/jobs", asked)
     assert (answered.status, answered.problem) == (422, "unsupported")
     found = {entry["pointer"] for entry in answered.document["errors"]}
-    assert {"/fleet_id", "/window/reserve_products", "/callback"} <= found
-    assert any(place.startswith("/commitments/") for place in found)
-    assert "/window_id" not in found
+    assert "/callback" in found
+    assert found.isdisjoint({"/fleet_id", "/window_id", "/window/reserve_products"})
 
 
 def test_per_asset_on_coupled_assets_is_refused(house: House) -> None:

@@ -10,7 +10,7 @@ A start that no y claims is of the last, dearest kind. Tight: Morales-Espana, La
 Power Systems 28, 2013 (from memory).
 """
 
-from math import ceil, inf
+from math import ceil
 
 import numpy as np
 
@@ -30,19 +30,23 @@ def add(model: Model, columns: GeneratorColumns, hours: float) -> None:
     count = len(columns.starts)
     claimed = []
     for k, (after, cost) in enumerate(costs[:-1]):
-        least, most = ceil(after / hours - 1e-9), ceil(costs[k + 1][0] / hours - 1e-9) - 1
         kind = model.columns(count, 0.0, 1.0)
         model.earn(kind, dearest - cost)
-        _within(model, columns, kind, max(least, 1), most, hours)
+        _within(model, columns, kind, (after, costs[k + 1][0]), hours)
         claimed.append((kind, 1.0))
     model.rows(-INFINITE, 0.0, *claimed, (columns.starts, -1.0))
 
 
-def _within(model: Model, columns: GeneratorColumns, kind: Columns, least: int, most: int, hours: float) -> None:
-    """Add (2): a start is of this kind only after a stop that many intervals before it."""
-    off = columns.unit.hours_off
+def _within(
+    model: Model, columns: GeneratorColumns, kind: Columns, hours_off: tuple[float, float], hours: float
+) -> None:
+    """Add (2): a start is of this kind only where it comes that many hours, from and up to, after a stop.
+
+    The hours off before the window need not be whole intervals, nor as many as one.
+    """
+    after, until = hours_off
+    least, most = max(ceil(after / hours - 1e-9), 1), ceil(until / hours - 1e-9) - 1
     for t in range(len(kind)):
         stops = columns.stops[max(0, t - most) : max(0, t - least + 1)]
-        intervals_off = t + (off / hours if off != inf else inf)
-        since_before = not columns.unit.was_on and least - 1e-9 <= intervals_off < most + 1 - 1e-9
+        since_before = not columns.unit.was_on and after - 1e-9 <= t * hours + columns.unit.hours_off < until - 1e-9
         model.row(-INFINITE, float(since_before), (kind[t : t + 1], 1.0), (stops, -np.ones(len(stops))))
