@@ -21,6 +21,37 @@ def store(asset: str = "quay-b1", **changes: Any) -> Document:
     return plain | {"energy_capacity_mwh": 2.0, "charge_efficiency": 1.0, "discharge_efficiency": 1.0} | changes
 
 
+def generator(asset: str = "quay-g1", **changes: Any) -> Document:
+    """Return a generator that runs between 1 and 4 MW at no cost."""
+    return {"id": asset, "kind": "generator", "min_output_mw": 1.0, "max_output_mw": 4.0} | changes
+
+
+def renewable(asset: str = "quay-pv", **changes: Any) -> Document:
+    """Return a renewable that can be curtailed."""
+    return {"id": asset, "kind": "renewable"} | changes
+
+
+def flexible_load(asset: str = "quay-pumps", **changes: Any) -> Document:
+    """Return a load that draws up to 2 MW where its needs allow."""
+    return {"id": asset, "kind": "flexible_load", "draw_limit_mw": 2.0} | changes
+
+
+def fixed_load(asset: str = "quay-mill", **changes: Any) -> Document:
+    """Return a fixed load."""
+    return {"id": asset, "kind": "fixed_load"} | changes
+
+
+def product(name: str = "up-60", **changes: Any) -> Document:
+    """Return a reserve product that is called upwards for an hour and pays nothing."""
+    return {"id": name, "direction": "up", "sustain_minutes": 60.0, "price_per_mw_per_hour": 0.0} | changes
+
+
+def outage(asset: str, first: int, end: int, left: float = 0.0) -> Document:
+    """Return an outage over the hours from `first` up to, not including, `end` of the window's day."""
+    begins, ends = f"2027-02-09T{first:02d}:00:00Z", f"2027-02-09T{end:02d}:00:00Z"
+    return {"asset": asset, "kind": "forced", "from": begins, "to": ends, "available_fraction": left}
+
+
 def hours(whom: Document, needed: float, threshold_mw: float, **changes: Any) -> Document:
     """Return a commitment of so many hours at a threshold."""
     return {
@@ -83,6 +114,18 @@ def refused(document: Document) -> Diagnosis:
 def power_of(schedule: Schedule, asset: str) -> list[float]:
     """Return the set points of an asset, MW."""
     return next(entry.power_mw for entry in schedule.assets if entry.id == asset)
+
+
+def on_of(schedule: Schedule, asset: str) -> list[bool]:
+    """Return whether a generator is on, by interval."""
+    is_on = next(entry.on for entry in schedule.assets if entry.id == asset)
+    assert is_on is not None
+    return is_on
+
+
+def reserve_of(schedule: Schedule, asset: str, name: str = "up-60") -> list[float]:
+    """Return what an asset holds of a reserve product, MW."""
+    return next(entry.reserve_mw for entry in schedule.assets if entry.id == asset)[name]
 
 
 def indexed(document: Document) -> ScheduleJob:
