@@ -13,6 +13,7 @@ from schemas.quantities import (
     Efficiency,
     Id,
     LossPerHour,
+    LotSize,
     PositiveSize,
     Size,
     Text,
@@ -28,7 +29,7 @@ class Site(Document):
     id: Id
     export_limit_mw: Size | None = None
     import_limit_mw: Size | None = None
-    lot_mw: PositiveSize | None = None
+    lot_mw: LotSize | None = None
     peak_import_charge_per_mw: Size = 0.0
     import_fee_per_mwh: Size = 0.0
     export_fee_per_mwh: Size = 0.0
@@ -138,6 +139,6 @@ class Fleet(Document):
     note: Text | None = None
     export_limit_mw: Size | None = None
     import_limit_mw: Size | None = None
-    lot_mw: PositiveSize | None = None
+    lot_mw: LotSize | None = None
     sites: Annotated[list[Site], Field(max_length=MAX_SITES)] = []
     assets: Annotated[list[Asset], Field(min_length=1, max_length=MAX_ASSETS)]

@@ -25,6 +25,9 @@ Currency = Annotated[str, StringConstraints(pattern=r"^[A-Z]{3}$")]
 
 Size = Annotated[float, Field(ge=0, le=LARGEST)]
 PositiveSize = Annotated[float, Field(gt=0, le=LARGEST)]
+LotSize = Annotated[float, Field(ge=1e-3, le=LARGEST)]
+"""No lot is smaller than 1 kW: solvers drop coefficients too small to matter, and with them the rule."""
+
 Signed = Annotated[float, Field(ge=-LARGEST, le=LARGEST)]
 Fraction = Annotated[float, Field(ge=0, le=1)]
 Efficiency = Annotated[float, Field(gt=0, le=1)]

@@ -221,12 +221,16 @@ def solve_jointly(
 def solve_by_cp_sat(instance: Instance, limits: Limits, watch: Watch, *, seed: int, seconds: float) -> Solution:
     """Plan all units of an instance by CP-SAT, with every binary from the start and the powers settled by an LP.
 
-    Where no exact powers exist for what it chose over whole steps, nothing is in hand.
+    Where no exact powers exist for what it chose over whole steps, or sizes are beyond whole steps, nothing is in hand.
     """
     apart = [np.ones(instance.intervals, dtype=bool) for _ in instance.stores]
     search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds, by="cp_sat")
     assembled = search.assemble()
-    for ending in (search.choose_near(assembled), search.solve(assembled)):
+    try:
+        endings = (search.choose_near(assembled), search.solve(assembled))
+    except cp_sat.BeyondWholeSteps:
+        return search.solution()
+    for ending in endings:
         if ending.values is not None and not search.is_proven():
             mixed = mixed_modes(assembled.columns, ending.values)
             search.keep(assembled, ending, mixed, has_loose_modes=True)

@@ -7,7 +7,7 @@ import numpy as np
 from workers.planning.flows import FlexibleLoadUnit, RenewableUnit
 from workers.planning.generator import GeneratorUnit
 from workers.planning.instance import Instance
-from workers.planning.model import Columns, Model
+from workers.planning.model import INFINITE, Columns, Model
 from workers.planning.reserve import Product
 from workers.planning.store import Store
 from workers.planning.units import Unit
@@ -143,13 +143,16 @@ def unit_columns(model: Model, unit: Unit, products: tuple[Product, ...]) -> Uni
 
 
 def _reserve(model: Model, unit: Unit, products: tuple[Product, ...]) -> Reserve:
-    """Add a column per block of each product that a unit may hold; only stores and generators hold any."""
+    """Add a column per block of each product that a unit may hold; only stores and generators hold any.
+
+    Without an upper bound: what backs it bounds it, and with one HiGHS 1.16 took 75 s and more instead of 9 s for the
+    published system of 40 units with reserve.
+    """
     reserve: Reserve = {}
-    most = float(np.max(unit.most_out_mw + unit.most_in_mw, initial=0.0))
     for number in unit.products:
         block = products[number].block
         if len(block):
-            reserve[number] = model.columns(int(block.max()) + 1, 0.0, most)[block]
+            reserve[number] = model.columns(int(block.max()) + 1, 0.0, INFINITE)[block]
     return reserve
 
 

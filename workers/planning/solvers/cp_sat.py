@@ -7,7 +7,7 @@ looseness. A *near* model loosens equations alone: its choice of the integer col
 (settle them by an LP with the choices fixed), its bound proves nothing.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from time import perf_counter
 
 import numpy as np
@@ -50,19 +50,24 @@ class Steps:
     lost: Floats
 
 
+class BeyondWholeSteps(Exception):  # noqa: N818 - it says that another method is due, not that something went wrong
+    """A model that cannot be put in whole steps."""
+
+
 def solve(matrix: Matrix, effort: Effort, watch: Watch, *, near: bool = False) -> Ending:
     """Maximise over whole steps; `values` are near a feasible point, not feasible, and `margin` is theirs.
 
     With `near`, equations alone are loosened: nothing is proven, neither by the bound (infinite) nor by failing.
 
-    Raises ValueError for a column without finite bounds, SolverError for a word without a meaning.
+    Raises BeyondWholeSteps where a column has no finite bound or sizes differ by more than whole numbers can hold,
+    SolverError for a word without a meaning.
     """
     if (matrix.lower > matrix.upper).any():
         return Ending(Stopped.INFEASIBLE, None, None, -np.inf, 0.0)
-    if not (np.isfinite(matrix.lower).all() and np.isfinite(matrix.upper).all()):
-        raise ValueError("CP-SAT needs finite bounds for every column")
     began = perf_counter()
+    matrix = _bounded(matrix)
     steps = _steps(matrix)
+    _require_whole_numbers_to_do(matrix, steps)
     model, variables = cp_model.CpModel(), []
     for low, high in zip(np.floor(matrix.lower / steps.size), np.ceil(matrix.upper / steps.size), strict=True):
         variables.append(model.new_int_var(int(low), int(high), ""))
@@ -94,6 +99,34 @@ def solve(matrix: Matrix, effort: Effort, watch: Watch, *, near: bool = False) -
     values = steps.size * np.array([solver.value(variable) for variable in variables], dtype=float)
     values = np.clip(values, matrix.lower, matrix.upper)
     return Ending(stopped, values, float(matrix.money @ values) + matrix.constant, bound, seconds)
+
+
+def _bounded(matrix: Matrix) -> Matrix:
+    """Bound the columns that have no upper bound by the rows they stand in: one pass does for what rules leave open."""
+    upper = matrix.upper.copy()
+    columns = matrix.rows.tocsc()
+    for j in np.flatnonzero(~np.isfinite(upper)):
+        place = slice(columns.indptr[j], columns.indptr[j + 1])
+        for k, coefficient in zip(columns.indices[place], columns.data[place], strict=True):
+            limit = matrix.row_upper[k] if coefficient > 0 else -matrix.row_lower[k]
+            row = slice(matrix.rows.indptr[k], matrix.rows.indptr[k + 1])
+            others = matrix.rows.indices[row] != j
+            terms = np.sign(coefficient) * matrix.rows.data[row][others]
+            members = matrix.rows.indices[row][others]
+            least = np.minimum(terms * matrix.lower[members], terms * matrix.upper[members]).sum()
+            if np.isfinite(limit) and np.isfinite(least):
+                upper[j] = min(upper[j], (limit - least) / abs(coefficient))
+    if not (np.isfinite(matrix.lower).all() and np.isfinite(upper).all()):
+        raise BeyondWholeSteps("a column has no finite bound")
+    return replace(matrix, upper=np.maximum(upper, matrix.lower))
+
+
+def _require_whole_numbers_to_do(matrix: Matrix, steps: Steps) -> None:
+    """Raise BeyondWholeSteps where sums over whole steps could leave 64 bits."""
+    reach = np.maximum(np.abs(matrix.lower), np.abs(matrix.upper)) / steps.size + 1.0
+    widest = float(reach.max(initial=0.0)) * COEFFICIENT * max(1, int(np.diff(matrix.rows.indptr).max(initial=1)))
+    if max(widest, float(reach.max(initial=0.0)) * COEFFICIENT * len(reach)) > 2.0**62:
+        raise BeyondWholeSteps("sums would leave 64 bits")
 
 
 def _steps(matrix: Matrix) -> Steps:
