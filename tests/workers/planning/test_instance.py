@@ -7,7 +7,7 @@ import pytest
 
 from tests.workers.planning.jobs import hours, indexed, job, store
 from workers.planning.instance import Instance, instance_of
-from workers.planning.rows import HoursRow
+from workers.planning.rows import HoursRow, most_against, most_power
 
 QUAY = store("quay-b1", site="quay", discharge_limit_mw=2.0, charge_limit_mw=1.5, standby_load_mw=0.125)
 MOLE = store("mole-b1", site="mole", discharge_limit_mw=4.0, charge_limit_mw=3.0)
@@ -105,6 +105,24 @@ def test_a_fraction_is_of_the_rated_power_of_whom_it_binds(
     assert row.load_mw[0] == load
     assert row.id == "evening"
     assert row.pointer == "/commitments/0"
+
+
+@pytest.mark.parametrize(("direction", "along", "against"), [("discharge", 4.0, 3.0), ("charge", 3.0, 4.0)])
+def test_a_row_knows_the_most_power_along_and_against_its_direction(
+    direction: str, along: float, against: float
+) -> None:
+    found = whole(commitments=[hours({"site": "mole"}, 1, 0.25, direction=direction)])
+    assert most_power(found.units, found.rows[0]).tolist() == [along, along]
+    assert most_against(found.units, found.rows[0]).tolist() == [against, against]
+    with_load = whole(commitments=[hours({"site": "quay"}, 1, 0.25)])
+    assert most_power(with_load.units, with_load.rows[0]).tolist() == [2.0 - 0.625, 2.0 - 1.125]
+
+
+def test_an_empty_site_can_be_asked_for_nothing() -> None:
+    sites = [*SITES, {"id": "bare"}]
+    found = of([1.0], FREE, sites=sites, commitments=[hours({"site": "bare"}, 1, 0.25)])
+    assert found.rows[0].units == ()
+    assert most_power(found.units, found.rows[0]).tolist() == [0.0]
 
 
 def test_a_commitment_on_each_of_some_assets_is_a_row_each() -> None:
