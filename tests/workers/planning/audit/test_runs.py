@@ -79,6 +79,14 @@ def test_an_outage_that_leaves_the_minimum_power_is_no_trip(left: dict[str, floa
     assert broken(result) == ["min_run"]
 
 
+def test_a_run_of_charging_is_cut_by_what_stops_charging_alone() -> None:
+    asset = runner(min_run_hours=3)
+    charging = {"available_charge_fraction": 0.0}
+    assert broken(one_store([0.0, -1.0, 0.0, 0.0], asset=asset, outages=[outage(2, **charging)])) == []
+    discharging = {"available_discharge_fraction": 0.0}
+    assert broken(one_store([0.0, -1.0, 0.0, 0.0], asset=asset, outages=[outage(2, **discharging)])) == ["min_run"]
+
+
 def test_an_outage_after_the_run_has_stopped_is_no_excuse() -> None:
     result = one_store([0.0, 1.0, 0.0, 0.0], asset=runner(min_run_hours=3), outages=[outage(3)])
     assert broken(result) == ["min_run"]
