@@ -14,8 +14,8 @@ from rq.worker_registration import WORKERS_BY_QUEUE_KEY
 from schemas.records import DEFAULT_PREFIX, Keys, rq_prefix
 from tests.faults.deployment import Deployment
 from workers.health_check import SEEN_SECONDS, main
-from workers.settings import Settings
 from workers.leases import LEASE_SECONDS
+from workers.settings import Settings
 from workers.worker import HEARTBEAT_SECONDS, PlanningWorker
 
 

@@ -9,8 +9,8 @@ import pytest
 from rq import Queue
 
 from tests.faults.deployment import Deployment
-from workers.settings import Settings
 from workers.leases import LEASE_SECONDS
+from workers.settings import Settings
 from workers.worker import PlanningWorker, how_it_ended
 
 
