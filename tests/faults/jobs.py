@@ -14,11 +14,27 @@ def small(**members: Any) -> Accepted:
 
 
 def long(seconds: float = 30.0, **members: Any) -> Accepted:
-    """Give a job whose solver works for as long as it is let: many stores, one connection, prices round zero."""
+    """Give a job whose solver works for as long as it is let, with a schedule in hand soon and no proof for long.
+
+    Many stores with minimum powers behind one connection, and priced commitments on sums of five of them in blocks.
+    """
     count, hours = 20, 96
     prices = [round(((7 * hour) % 11 - 5) * 3.1 - 4.0, 2) for hour in range(hours)]
     document = _document(count, hours, prices, interval="PT15M", **members)
     document["fleet"] |= {"export_limit_mw": 0.4 * 2.0 * count, "import_limit_mw": 0.4 * 2.0 * count}
+    names = [asset["id"] for asset in document["fleet"]["assets"]]
+    document["commitments"] = [
+        {
+            "id": f"sum-{number}",
+            "kind": "hours_at_least",
+            "applies_to": {"group": names[number::4]},
+            "threshold": {"fraction_of_rated": 0.31},
+            "hours": 6,
+            "min_block_hours": 1.0,
+            "shortfall_price_per_hour": 40.0,
+        }
+        for number in range(4)
+    ]
     return accepted(document | {"time_limit_seconds": seconds, "relative_gap": 1e-7})
 
 
