@@ -1,11 +1,11 @@
 """One model for plants that something couples: assemble the rules, solve, and never mix modes.
 
-A store that may charge and discharge at once is a relaxation of a store. It is solved first, with the binaries of
-`rules.exclusive_modes` only where mixing could pay, and among several stores with those as fractions at first. Where
-the answer mixes, a linear polish with every discrete choice and the modes fixed makes a schedule of it, often within
-the gap; if not, the binaries go in and the model is solved again. The quadratic part of a generator's cost
-is treated alike: tangents below it, the exact cost of what is found, more tangents there. A relaxation's bound is true,
-and an infeasible one proves the request infeasible.
+A store that may charge and discharge at once is a relaxation of a store: the binaries of `rules.exclusive_modes` go in
+only where mixing could pay, or where an answer mixed. Such an answer is made a schedule by a linear polish with every
+discrete choice and the modes fixed, often within the gap. The quadratic part of a generator's cost is treated alike:
+tangents below it, the exact cost of what is found, more tangents there. Among several plants a narrower model near the
+LP relaxation finds a first schedule, and proves nothing. A relaxation's bound is true, and an infeasible one proves the
+request infeasible.
 """
 
 from dataclasses import dataclass, field, replace
