@@ -94,6 +94,15 @@ class CommitmentResult(Answer):
     margin_forgone: MarginForgone | None = None
 
 
+class CommitmentCost(Answer):
+    """What so many hours of a commitment cost: the margin with them, its proven bound, what is lost against none."""
+
+    hours: float
+    margin: float
+    margin_bound: float | None
+    cost: float
+
+
 class Violation(Answer):
     """A rule that a schedule breaks, by how much, where and when."""
 
@@ -157,6 +166,7 @@ class Schedule(Answer):
     assumptions: list[Assumption] = []
     verification: Verification
     provenance: Provenance
+    commitment_costs: list[CommitmentCost] | None = None
     cautions: list[str]
 
 

@@ -5,7 +5,7 @@ from typing import Any
 from zoneinfo import ZoneInfo
 
 from schemas.cautions import CAUTIONS
-from schemas.diagnosis import Conflict, Diagnosis, Member
+from schemas.diagnosis import Conflict, Diagnosis, Member, NearestSchedule, Shortfall
 from schemas.schedule import (
     AssetSchedule,
     CommitmentResult,
@@ -87,12 +87,17 @@ def schedule_document(violated: bool = False) -> Json:
     return schedule(violated).model_dump(mode="json", by_alias=True)
 
 
+def nearest_schedule() -> NearestSchedule:
+    missing = Shortfall(pointer="/commitments/0", text="firm-evening misses 1 h", amount=1.0, unit="h")
+    return NearestSchedule(**dict(schedule()), shortfalls=[missing])
+
+
 def diagnosis_document(with_nearest: bool = True) -> Json:
     found = Diagnosis(
         complete=True,
         summary="2 h at 4 MW need 8.4 MWh; 4 MWh are there.",
         conflicts=[Conflict(irreducible=True, members=[Member(pointer="/commitments/0", text="firm-evening")])],
-        nearest_schedule=schedule() if with_nearest else None,
+        nearest_schedule=nearest_schedule() if with_nearest else None,
         cautions=list(CAUTIONS),
     )
     return found.model_dump(mode="json", by_alias=True)
