@@ -7,6 +7,7 @@ valid. Supported: every kind of asset and commitment, reserve products and lots;
 
 from __future__ import annotations
 
+from collections.abc import Set
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
@@ -16,6 +17,7 @@ from tests.oracles.formulation_generator import add_generator
 from tests.oracles.formulation_meters import Powers, add_meters
 from tests.oracles.formulation_passive import add_flexible_load, add_renewable, fixed_load
 from tests.oracles.formulation_program import Affine, Program, Solution
+from tests.oracles.formulation_row import RowKey
 from tests.oracles.formulation_storage import Power, add_storage
 
 Outcome = Literal["optimal", "feasible", "infeasible", "undecided"]
@@ -57,20 +59,30 @@ def solve(job: Job, *, gap: float = 1e-6, time_limit: float = 60.0) -> Answer:
     return _answer(outcome, solution, powers)
 
 
-def formulate(job: Job, clock: Clock) -> tuple[Program, Powers]:
-    """Return the program of a job and the power of each asset in it."""
+def formulate(
+    job: Job, clock: Clock, *, without_rows: Set[RowKey] = frozenset(), free_energies: Set[str] = frozenset()
+) -> tuple[Program, Powers]:
+    """Return the program of a job and the power of each asset in it.
+
+    What no edit of a document can express: `without_rows` are not asked, and the stores in `free_energies` may start
+    with any energy from `min_stored_mwh` to their ceiling; they need a `final_stored_mwh` of their own in the job.
+    """
     program = Program()
-    powers = {asset["id"]: _add_asset(program, job, asset, clock) for asset in job["fleet"]["assets"]}
+    powers = {
+        asset["id"]: _add_asset(program, job, asset, clock, asset["id"] in free_energies)
+        for asset in job["fleet"]["assets"]
+    }
     add_meters(program, job, powers, clock)
-    add_commitments(program, job, powers, clock)
+    add_commitments(program, job, powers, clock, without_rows)
     return program, powers
 
 
-def _add_asset(program: Program, job: Job, asset: dict[str, Any], clock: Clock) -> Power:
+def _add_asset(program: Program, job: Job, asset: dict[str, Any], clock: Clock, has_free_energy: bool) -> Power:
     if asset["kind"] == "fixed_load":
         return fixed_load(job, asset, clock)
+    if asset["kind"] == "storage":
+        return add_storage(program, job, asset, clock, has_free_energy=has_free_energy)
     add = {
-        "storage": add_storage,
         "generator": add_generator,
         "renewable": add_renewable,
         "flexible_load": add_flexible_load,

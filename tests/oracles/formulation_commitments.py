@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Set
 from dataclasses import dataclass
 from typing import Any
 
@@ -15,7 +16,7 @@ from tests.oracles.formulation_deliveries import (
 from tests.oracles.formulation_hours import add_hours_at_least, add_hours_at_most
 from tests.oracles.formulation_meters import Powers, metered, site_assets
 from tests.oracles.formulation_program import Affine, Program, total
-from tests.oracles.formulation_row import Row
+from tests.oracles.formulation_row import Row, RowKey
 
 
 @dataclass(frozen=True)
@@ -27,12 +28,14 @@ class Subject:
     power: list[Affine]
 
 
-def add_commitments(program: Program, job: Job, powers: Powers, clock: Clock) -> None:
-    """Add every commitment of the job.
+def add_commitments(
+    program: Program, job: Job, powers: Powers, clock: Clock, without_rows: Set[RowKey] = frozenset()
+) -> None:
+    """Add every commitment of the job, but for the rows that are left out.
 
     Raises ValueError for a kind that is none of the contract.
     """
-    for commitment in given(job, "commitments", []):
+    for number, commitment in enumerate(given(job, "commitments", [])):
         add = {
             "hours_at_least": add_hours_at_least,
             "hours_at_most": add_hours_at_most,
@@ -43,12 +46,15 @@ def add_commitments(program: Program, job: Job, powers: Powers, clock: Clock) ->
         }.get(commitment["kind"])
         if add is None:
             raise ValueError(f"this oracle does not know {commitment['kind']}")
-        for row in _rows(job, commitment, powers, clock):
-            add(program, row)
+        for (subject, day), row in _rows(job, commitment, powers, clock):
+            if (number, subject or None, day) not in without_rows:
+                add(program, row)
 
 
-def _rows(job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock) -> list[Row]:
-    """Return the rows of a commitment, what was counted before credited to the first of each subject."""
+def _rows(
+    job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock
+) -> list[tuple[tuple[str, str | None], Row]]:
+    """Return the rows of a commitment by subject and day, what was counted before credited to each subject's first."""
     counted = given(given(given(job, "counted_before"), "commitments"), commitment["id"], 0.0)
     excused = {t for span in given(commitment, "excused", []) for t in clock.inside(span.get("from"), span.get("to"))}
     sign = -1.0 if given(commitment, "direction", "discharge") == "charge" else 1.0
@@ -60,18 +66,17 @@ def _rows(job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock) ->
             product = commitment["product"]
             reserve = [total(powers[a].reserve.of(product, t) for a in subject.members) for t in range(len(clock))]
         for span in spans(commitment, clock):
-            rows.append(
-                Row(
-                    commitment=commitment,
-                    clock=clock,
-                    intervals=span.intervals,
-                    power=[power * sign for power in subject.power],
-                    reserve=reserve,
-                    rated_mw=_rated_mw(job, commitment, subject.members),
-                    excused=excused,
-                    credit=credit,
-                )
+            row = Row(
+                commitment=commitment,
+                clock=clock,
+                intervals=span.intervals,
+                power=[power * sign for power in subject.power],
+                reserve=reserve,
+                rated_mw=_rated_mw(job, commitment, subject.members),
+                excused=excused,
+                credit=credit,
             )
+            rows.append(((subject.key, None if span.day is None else span.day.isoformat()), row))
             credit = 0.0
     return rows
 

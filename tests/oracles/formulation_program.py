@@ -178,6 +178,17 @@ class Program:
             best = Solution(found.status, better.value, bound, better.columns)
         return Solution(1, best.value, best.bound, best.columns)
 
+    def can_be_met(self, time_limit: float) -> bool:
+        """Tell whether any point meets all rows; forgets the value, which has no say in that.
+
+        Raises RuntimeError where the solver neither finds a point nor proves that there is none.
+        """
+        self.value = Affine({})
+        found = self._run(np.array(self.lower), np.array(self.upper), np.array(self.whole), 0.0, time_limit)
+        if found.status not in (0, 2):
+            raise RuntimeError("the solver ended with status", found.status)
+        return bool(found.status == 0)
+
     def _solve_once(self, gap: float, time_limit: float) -> Solution:
         """Solve with the tangents at hand; then settle the continuous columns for the whole ones found."""
         found = self._run(np.array(self.lower), np.array(self.upper), np.array(self.whole), gap, time_limit)

@@ -8,6 +8,9 @@ from typing import Any
 from tests.oracles.formulation_clock import Clock, given
 from tests.oracles.formulation_program import Affine
 
+RowKey = tuple[int, str | None, str | None]
+"""A row by the number of its commitment in the job, its asset and its day; None where it has none of its own."""
+
 
 @dataclass(frozen=True)
 class Row:

@@ -76,8 +76,13 @@ def opening(job: Job, asset: dict[str, Any], clock: Clock) -> Opening:
     return Opening(min(stored, capacity), given(state, "power_mw", 0.0), hours / clock.hours)
 
 
-def add_storage(program: Program, job: Job, asset: dict[str, Any], clock: Clock) -> Power:
-    """Add a store's columns, rows, wear and final energy; return its power."""
+def add_storage(
+    program: Program, job: Job, asset: dict[str, Any], clock: Clock, *, has_free_energy: bool = False
+) -> Power:
+    """Add a store's columns, rows, wear and final energy; return its power.
+
+    With `has_free_energy` it starts with any energy of its range, and what `initial` says widens no bound.
+    """
     start = opening(job, asset, clock)
     limits, possible = {}, {}
     lowered = [False] * len(clock)
@@ -103,7 +108,7 @@ def add_storage(program: Program, job: Job, asset: dict[str, Any], clock: Clock)
     net = [d - c for d, c in zip(power["discharge"], power["charge"], strict=True)]
     held = Reserve()
     if start.stored_mwh is not None:
-        levels = _energy(program, job, asset, clock, start.stored_mwh, power)
+        levels = _energy(program, job, asset, clock, None if has_free_energy else start.stored_mwh, power)
         held = add_reserve(program, job, asset, clock, asset["charge_limit_mw"] + asset["discharge_limit_mw"])
         _deliverable(program, asset, limits, net, levels, held)
     _cycles(program, job, asset, clock, power["discharge"])
@@ -114,13 +119,22 @@ def add_storage(program: Program, job: Job, asset: dict[str, Any], clock: Clock)
 
 
 def _energy(
-    program: Program, job: Job, asset: dict[str, Any], clock: Clock, stored: float, power: dict[str, list[Affine]]
+    program: Program,
+    job: Job,
+    asset: dict[str, Any],
+    clock: Clock,
+    at_start: float | None,
+    power: dict[str, list[Affine]],
 ) -> list[Level]:
-    """Follow the energy in the store; hold it between its bounds and at or above its final target."""
+    """Follow the energy in the store; hold it between its bounds and at or above its final target.
+
+    `at_start` None: whatever in its range serves best, which a bound never has to give way to.
+    """
     levels = []
     kept = (1.0 - given(asset, "self_discharge_per_hour", 0.0)) ** clock.hours
     low, high = given(asset, "min_stored_mwh", 0.0), given(asset, "max_stored_mwh", asset["energy_capacity_mwh"])
-    idle, level = stored, Affine({}, stored)
+    stored = low if at_start is None else at_start
+    idle, level = stored, program.column(low, high) if at_start is None else Affine({}, stored)
     for t in range(len(clock)):
         idle = idle * kept
         # Energy outside the range at the start widens the bound it breaks to what an idle store would still hold.
