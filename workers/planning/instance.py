@@ -26,7 +26,8 @@ class Meter:
     """One meter: a site, or an asset without one.
 
     `load_mw` is what its fixed loads and standby loads draw, T values, positive out of the grid; `position_mw`
-    what was sold already, positive into it. Limits are T values, infinite where there is none.
+    what was sold already, positive into it. Limits are T values, infinite where there is none; `excess_price` is what a MW
+    beyond them costs per hour where a diagnosis looks for the nearest schedule (None: they bind).
     """
 
     id: str
@@ -41,6 +42,7 @@ class Meter:
     import_fee_per_mwh: float = 0.0
     peak_import_charge_per_mw: float = 0.0
     peak_so_far_mw: float = 0.0
+    excess_price: float | None = None
 
     @property
     def is_limited(self) -> bool:

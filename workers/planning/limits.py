@@ -40,6 +40,10 @@ class Limits:
         """Give the seconds solvers may still take; at or below zero there is no time left."""
         return self.seconds * (1 - AUDIT_SHARE) - (self.clock() - self.started)
 
+    def left_to_hand_over(self) -> float:
+        """Give the seconds in which what is in hand may still be made a schedule, half of what solvers leave."""
+        return self.seconds * (1 - AUDIT_SHARE / 2) - (self.clock() - self.started)
+
 
 class Watch(Protocol):
     """Who is told how far a plan has come, and may ask it to stop; whether it ever will is `is_stoppable`."""
@@ -53,6 +57,9 @@ class Watch(Protocol):
 
     def is_stop_asked(self) -> bool:
         """Tell whether the plan should end with what is in hand."""
+
+    def more_time(self, seconds: float) -> None:
+        """Take note that the plan has turned into a diagnosis, which may take so much longer."""
 
     def solving(self, cancel: Callable[[], None]) -> AbstractContextManager[None]:
         """Hold a way to cancel a solve for as long as it runs; `cancel` may be called from another thread."""
@@ -69,6 +76,9 @@ class Unwatched:
     def is_stop_asked(self) -> bool:
         """Never ask to stop."""
         return False
+
+    def more_time(self, seconds: float) -> None:
+        """Let it pass."""
 
     def solving(self, cancel: Callable[[], None]) -> AbstractContextManager[None]:  # noqa: ARG002
         """Let it run."""

@@ -1,21 +1,26 @@
 """From a job to its answer: a function of its arguments, with no queue and no web."""
 
+from dataclasses import replace
 from math import isfinite
 
 import numpy as np
 
-from schemas.diagnosis import Diagnosis
+from schemas.diagnosis import Diagnosis, NearestSchedule
 from schemas.job import CheckJob, Job, ScheduleJob
 from schemas.schedule import Schedule, Undecided, Violation
 from schemas.support import require_supported
 from workers.planning import answer
 from workers.planning.assembly import UnitPlan
 from workers.planning.audit import Decision, Replay, replay
+from workers.planning.diagnosis.diagnose import Findings, diagnose
+from workers.planning.diagnosis.feasibility import Solving
+from workers.planning.diagnosis.report import diagnosis_of, nearest_schedule
+from workers.planning.diagnosis.scope import Question
 from workers.planning.extraction import decision_of
 from workers.planning.instance import Instance, instance_of
 from workers.planning.limits import Limits, Unwatched, Watch
 from workers.planning.methods import Choice, Found, choose, solve
-from workers.planning.screening import Finding, screen
+from workers.planning.screening import screen
 
 Answer = Schedule | Diagnosis | Undecided
 
@@ -46,13 +51,13 @@ def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
     watch = watch or Unwatched()
     watch.progress("indexing", 0.0)
     instance = instance_of(job)
-    if findings := screen(instance):
-        return _refused(job, findings)
+    if screen(instance):
+        return _diagnosed(job, instance, [], limits, watch)
     choice = choose(instance, job.method)
     watch.progress("solving", 0.0)
     found = solve(choice, limits, watch, seed=job.seed)
     if found.infeasible_parts:
-        return _proven_infeasible(job, found.infeasible_parts)
+        return _diagnosed(job, instance, found.infeasible_parts, limits, watch)
     if not found.has_schedule:
         return _undecided(job, found, limits)
     watch.progress("auditing", 1.0)
@@ -122,35 +127,33 @@ def _effort(choice: Choice, found: Found, limits: Limits) -> answer.Effort:
     )
 
 
-def _refused(job: ScheduleJob, findings: list[Finding]) -> Diagnosis:
-    return answer.diagnosis(
-        job, " ".join(finding.sentence for finding in findings), [finding.members for finding in findings]
-    )
+def _diagnosed(
+    job: ScheduleJob, instance: Instance, infeasible: list[Instance], limits: Limits, watch: Watch
+) -> Diagnosis:
+    """Find out why a job cannot be met, in as much time again as it had."""
+    again = replace(limits, started=limits.clock())
+    watch.more_time(again.seconds)
+    solving = Solving(again, watch, job.seed, again.clock() + again.left_to_solve())
+
+    def audited(changed: ScheduleJob, choice: Choice, found: Found) -> Schedule:
+        return _audited(changed, choice, found, again, watch)
+
+    proven = [tuple(unit.id for unit in part.units) for part in infeasible]
+    found = diagnose(Question(job, instance), proven, audited, solving)
+    nearest, no_nearest = _nearest(job, found, again)
+    return diagnosis_of(found, nearest, no_nearest)
 
 
-def _proven_infeasible(job: ScheduleJob, parts: list[Instance]) -> Diagnosis:
-    """Name what is asked of the assets that cannot meet it."""
-    conflicts = [_asked(job, part) for part in parts]
-    names = [", ".join(unit.id for unit in part.units) for part in parts]
-    sentence = " ".join(
-        f"No schedule of {who} meets all that is asked of it within its limits: {'; '.join(text for _, text in asked)}."
-        for who, asked in zip(names, conflicts, strict=True)
-    )
-    return answer.diagnosis(job, sentence, conflicts)
-
-
-def _asked(job: ScheduleJob, part: Instance) -> list[tuple[str, str]]:
-    binding = {row.commitment: row for row in part.rows if row.price is None}
-    commitments = [
-        (row.pointer, f"commitment {job.commitments[number].id} ({job.commitments[number].kind})")
-        for number, row in sorted(binding.items())
-    ]
-    targets = [
-        (f"/targets/{store.id}/final_stored_mwh", f"{store.id} ends with at least {store.final_floor_mwh:g} MWh")
-        for store in part.stores
-        if store.final_floor_mwh > 0
-    ]
-    return commitments + targets
+def _nearest(job: ScheduleJob, found: Findings, limits: Limits) -> tuple[NearestSchedule | None, str | None]:
+    """Audit the nearest schedule by the request relaxed by what it lists as missing; else say why there is none."""
+    near = found.nearest
+    if near is None:
+        return None, found.no_nearest or "Time did not suffice to find it."
+    replayed = replay(near.job, _decisions(near.found))
+    if replayed.verification.violations:
+        raise PlanningError("the audit refuses the nearest schedule", replayed.verification.violations)
+    effort = _effort(near.choice, near.found, limits)
+    return nearest_schedule(answer.schedule(job, replayed, "infeasible", None, effort), near.missing), None
 
 
 def _undecided(job: ScheduleJob, found: Found, limits: Limits) -> Undecided:

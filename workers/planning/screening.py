@@ -56,7 +56,7 @@ def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
     hours = instance.hours
     into = hours * store.charge_efficiency * store.charge_limit_mw * store.can_charge
     out_of = hours / store.discharge_efficiency * store.discharge_limit_mw * store.can_discharge
-    most = least = store.initial_mwh
+    most, least = store.most_initial_mwh, store.least_initial_mwh
     limits = zip(into.tolist(), out_of.tolist(), store.floor_mwh.tolist(), store.ceiling_mwh.tolist(), strict=True)
     for t, (charged, discharged, floor, ceiling) in enumerate(limits):
         most = min(most * store.kept + charged, ceiling)
@@ -92,7 +92,7 @@ def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
     member = (row.pointer, _words(row))
     power = most_power(instance.units, row)
     able = [t for t in row.intervals if t in row.excused or power[t] >= row.threshold_mw - SLACK_MW]
-    counted = _in_blocks(able, row.min_block)
+    counted = in_blocks(able, row.min_block)
     if len(counted) < due:
         unit = f" in unbroken stretches of {row.min_block * instance.hours:g} h" if row.min_block > 1 else ""
         yield Finding(
@@ -117,7 +117,7 @@ def _outages(instance: Instance, units: Iterable[int], intervals: Iterable[int])
     ]
 
 
-def _in_blocks(able: list[int], least: int) -> list[int]:
+def in_blocks(able: list[int], least: int) -> list[int]:
     """Keep the intervals that lie in unbroken stretches of at least so many."""
     kept: list[int] = []
     stretch: list[int] = []
@@ -152,7 +152,7 @@ def _energy_for_hours(
     for until, kept_back, what, members in weighed:
         best = np.sort((store.charge_limit_mw * store.can_charge)[: until + 1])[::-1][: until + 1 - paid]
         charged = float(best.sum()) * hours * store.charge_efficiency
-        spare = store.initial_mwh - kept_back
+        spare = store.most_initial_mwh - kept_back
         if needed > spare + charged + SLACK_MWH:
             yield Finding(
                 (*members, *_outages(instance, row.units, range(until + 1))),

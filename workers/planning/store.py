@@ -1,6 +1,6 @@
 """A store as the models see it: limits per interval, state at the start, what a day may hold."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import ceil, floor
 
 import numpy as np
@@ -27,7 +27,8 @@ class Store:
     `kept` is the share of stored energy left after one interval, `ramp_mw` the largest change of net power from
     one interval to the next (None: unlimited), binding into the intervals `ramp_binds`. `direction_before` is +1,
     0 or -1 for discharging, idle, charging before the window; `held_intervals` how many of the first intervals
-    that run, or that rest, must still last.
+    that run, or that rest, must still last. Set by a diagnosis alone: `is_initial_free` leaves open with what energy it
+    starts, `target_price` is what a MWh short of the final target costs (None: it binds).
     """
 
     id: str
@@ -58,6 +59,18 @@ class Store:
     held_intervals: int
     outages: tuple[OutOfService, ...] = ()
     products: tuple[int, ...] = ()
+    is_initial_free: bool = False
+    target_price: float | None = None
+
+    @property
+    def least_initial_mwh(self) -> float:
+        """Least energy it may start with, MWh; what it has, unless a diagnosis leaves that open."""
+        return float(self.floor_mwh[0]) if self.is_initial_free else self.initial_mwh
+
+    @property
+    def most_initial_mwh(self) -> float:
+        """Most energy it may start with, MWh."""
+        return float(self.ceiling_mwh[0]) if self.is_initial_free else self.initial_mwh
 
     @property
     def can_discharge(self) -> Booleans:
@@ -98,6 +111,12 @@ class Store:
     def is_lossless(self) -> bool:
         """Tell whether charging and discharging at once would change nothing but wear."""
         return self.charge_efficiency * self.discharge_efficiency == 1.0
+
+    def with_any_initial_energy(self, asset: Storage) -> "Store":
+        """Let it start with any energy between its floor and its ceiling, neither of them widened."""
+        count = len(self.floor_mwh)
+        floor, ceiling = np.full(count, asset.min_stored_mwh), np.full(count, _ceiling(asset))
+        return replace(self, floor_mwh=floor, ceiling_mwh=ceiling, is_initial_free=True)
 
 
 def whole_intervals(hours: float, interval_hours: float) -> int:

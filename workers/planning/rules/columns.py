@@ -29,7 +29,8 @@ class States:
 class StoreColumns:
     """Columns of one store, T each: powers at the terminals in MW (both >= 0), energy at interval ends in MWh.
 
-    `states` are there only where being on matters.
+    `states` are there only where being on matters, `opening` (one column, MWh) only where the energy at the start is
+    left open.
     """
 
     unit: Store
@@ -38,6 +39,7 @@ class StoreColumns:
     stored: Columns
     states: States | None = None
     reserve: Reserve = field(default_factory=dict)
+    opening: Columns | None = None
 
     @property
     def net(self) -> Net:
@@ -165,7 +167,8 @@ def _store(model: Model, store: Store, products: tuple[Product, ...]) -> StoreCo
     states = None
     if store.has_states:
         states = States(model.binaries(store.can_discharge), model.binaries(store.can_charge))
-    return StoreColumns(store, charge, discharge, stored, states, _reserve(model, store, products))
+    opening = model.columns(1, store.least_initial_mwh, store.most_initial_mwh) if store.is_initial_free else None
+    return StoreColumns(store, charge, discharge, stored, states, _reserve(model, store, products), opening)
 
 
 def _generator(model: Model, generator: GeneratorUnit, products: tuple[Product, ...]) -> GeneratorColumns:

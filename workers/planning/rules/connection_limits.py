@@ -1,9 +1,10 @@
 """Net power stays within the connection, at every site and for the fleet, with the reserve that may be called.
 
-    sum of power[a,t] + sum of up[a,t] - L[m,t]    <=  X[m,t]                          (1)
-    sum of power[a,t] - sum of down[a,t] - L[m,t]  >=  -I[m,t]                         (2)
+    sum of power[a,t] + sum of up[a,t] - L[m,t]    <=  X[m,t] + over[m,t]              (1)
+    sum of power[a,t] - sum of down[a,t] - L[m,t]  >=  -I[m,t] - over[m,t]             (2)
 
 X,I  export and import limit, MW; L  what fixed and standby loads draw there, MW; up,down  reserve held behind the meter
+over  power beyond the limit, MW; 0, unless a diagnosis looks for the nearest schedule and prices it
 
 Where both limits are 0 the meter is an island: its reserve serves its own load and is not counted.
 """
@@ -22,14 +23,22 @@ def add(model: Model, columns: FleetColumns, meter: Meter) -> None:
     net = columns.net(meter.units)
     up, down = columns.held(meter.units, up=True), columns.held(meter.units, up=False)
     with_up, with_down = ~meter.is_islanded & bool(up), ~meter.is_islanded & bool(down)
-    _rows(model, [*net, *up], np.full_like(upper, -INFINITE), np.where(with_up, upper, INFINITE))
-    _rows(
-        model,
-        [*net, *((held, -1.0) for held, _ in down)],
-        np.where(with_down, lower, -INFINITE),
-        np.full_like(lower, INFINITE),
-    )
-    _rows(model, net, np.where(with_down, -INFINITE, lower), np.where(with_up, INFINITE, upper))
+    beyond: Net = []
+    below: Net = []
+    if meter.excess_price is not None and meter.is_limited:
+        over = model.columns(len(upper), 0.0, INFINITE)
+        model.earn(over, -meter.excess_price * columns.instance.hours)
+        beyond, below = [(over, -1.0)], [(over, 1.0)]
+    nothing = np.full_like(upper, INFINITE)
+    _rows(model, [*net, *up, *beyond], -nothing, np.where(with_up, upper, INFINITE))
+    held = [(held, -1.0) for held, _ in down]
+    _rows(model, [*net, *held, *below], np.where(with_down, lower, -INFINITE), nothing)
+    lower, upper = np.where(with_down, -INFINITE, lower), np.where(with_up, INFINITE, upper)
+    if not beyond:
+        _rows(model, net, lower, upper)
+        return
+    _rows(model, [*net, *beyond], -nothing, upper)
+    _rows(model, [*net, *below], lower, nothing)
 
 
 def _rows(model: Model, terms: Net, lower: Floats, upper: Floats) -> None:

@@ -52,8 +52,11 @@ def _at_both_ends(
     """Add sum of lasting + sign * stored <= limit, with the energy at the end and at the start of each interval."""
     stored, count = columns.stored, len(columns.stored)
     model.rows(-INFINITE, limit, *lasting, (stored, sign))
-    first = max(limit[0] - sign * columns.unit.initial_mwh, 0.0)
-    model.rows(-INFINITE, first, *((held[:1], factor) for held, factor in lasting))
+    at_first = [(held[:1], factor) for held, factor in lasting]
+    if columns.opening is None:
+        model.rows(-INFINITE, max(limit[0] - sign * columns.unit.initial_mwh, 0.0), *at_first)
+    else:
+        model.rows(-INFINITE, limit[0], *at_first, (columns.opening, sign))
     falling = np.flatnonzero(sign * (limit[1:] - limit[:-1]) < 0) + 1
     steady = np.setdiff1d(np.arange(1, count), falling)
     if len(steady):

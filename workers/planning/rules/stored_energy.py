@@ -7,7 +7,7 @@ s    energy in store at the end of interval t, MWh; s[a,-1] is the initial energ
 c,d  charging and discharging power at the terminals, MW, both >= 0
 h    interval length, hours; f  fraction lost per hour
 
-(2) are the bounds of the columns. Replayed by the audit; the two must not share code.
+(2) are the bounds of the columns; where a diagnosis leaves the initial energy open it is one too. Replayed by the audit; the two must not share code.
 """
 
 from workers.planning.model import Model
@@ -18,8 +18,12 @@ def add(model: Model, columns: StoreColumns, hours: float) -> None:
     """Add the energy balance (1) of one store."""
     store, stored = columns.unit, columns.stored
     into, out_of = -hours * store.charge_efficiency, hours / store.discharge_efficiency
+    first = [(stored[:1], 1.0), (columns.charge[:1], into), (columns.discharge[:1], out_of)]
     start = store.initial_mwh * store.kept
-    model.rows(start, start, (stored[:1], 1.0), (columns.charge[:1], into), (columns.discharge[:1], out_of))
+    if columns.opening is not None:
+        start = 0.0
+        first.append((columns.opening, -store.kept))
+    model.rows(start, start, *first)
     if len(stored) > 1:
         model.rows(
             0.0,

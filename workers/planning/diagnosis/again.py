@@ -1,0 +1,72 @@
+"""Plan a changed request again, and reuse what was found for the parts that a change leaves alone."""
+
+from collections.abc import Callable
+from dataclasses import fields, is_dataclass
+from typing import Any
+
+import numpy as np
+
+from schemas.job import ScheduleJob
+from schemas.schedule import Schedule
+from workers.planning.diagnosis.feasibility import Solving
+from workers.planning.instance import Instance, instance_of
+from workers.planning.joint import Solution
+from workers.planning.methods import Choice, Found
+from workers.planning.parts import independent_parts
+
+Audited = Callable[[ScheduleJob, Choice, Found], Schedule]
+
+
+class Planner:
+    """Plans part by part; a part that is the same in every figure is not solved twice."""
+
+    def __init__(self, audited: Audited) -> None:
+        self.audited = audited
+        self._known: dict[tuple[str, ...], tuple[Instance, Solution]] = {}
+
+    def plan(self, job: ScheduleJob, solving: Solving) -> Schedule | None:
+        """Plan a job; None where it cannot be met. Raises CutShort where time decides nothing."""
+        parts = tuple(independent_parts(instance_of(job)))
+        solutions = []
+        for part in parts:
+            solution = self.solution(part, solving)
+            if solution.plans is None:
+                if solution.bound == -np.inf:
+                    return None
+                raise solving.cut_short()
+            solutions.append(solution)
+        return self.audited(job, choice_of(parts), Found(choice_of(parts), tuple(solutions)))
+
+    def solution(self, part: Instance, solving: Solving) -> Solution:
+        """Solve a part, or remember what was found for the same one; raises CutShort."""
+        whose = tuple(unit.id for unit in part.units) + tuple(meter.id for meter in part.meters)
+        known = self._known.get(whose)
+        if known is not None and is_same(known[0], part):
+            return known[1]
+        solution = solving.solve(part)
+        if solution.plans is not None:
+            self._known[whose] = (part, solution)
+        return solution
+
+
+def choice_of(parts: tuple[Instance, ...]) -> Choice:
+    """Name the method by which parts are solved one by one."""
+    alone = all(len(part.units) <= 1 for part in parts)
+    return Choice("per_asset" if alone else "milp", parts, "part by part, for a diagnosis")
+
+
+def is_same(one: Any, other: Any) -> bool:
+    """Tell whether two instances, or parts of them, are equal in every figure."""
+    if isinstance(one, np.ndarray):
+        return isinstance(other, np.ndarray) and np.array_equal(one, other)
+    if isinstance(one, tuple):
+        return (
+            isinstance(other, tuple)
+            and len(one) == len(other)
+            and all(is_same(left, right) for left, right in zip(one, other, strict=True))
+        )
+    if is_dataclass(one) and not isinstance(one, type):
+        return type(one) is type(other) and all(
+            is_same(getattr(one, each.name), getattr(other, each.name)) for each in fields(one)
+        )
+    return bool(one == other)

@@ -1,0 +1,126 @@
+"""How far each commitment can be met: the least it must miss with everything else held."""
+
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass, replace
+from math import ceil, floor
+
+from schemas.commitments import Commitment, EnergyAtLeast, EnergyAtMost, HoursAtLeast, HoursAtMost
+from workers.planning.diagnosis.elements import SPARED_FIRST, Element
+from workers.planning.diagnosis.feasibility import Solving, most_energy, without_money
+from workers.planning.diagnosis.localise import Trouble
+from workers.planning.diagnosis.scope import Scope, row_of
+from workers.planning.instance import Instance
+from workers.planning.rows import CeilingRow, CommitmentRow, EnergyRow, FirmRow, HoldingRow, HoursRow
+from workers.planning.store import whole_intervals
+
+GRAIN_MWH = 0.01
+"""Energies and reserve are told in steps of 0.01 MWh, rounded to the safe side."""
+
+CLOSE = 0.1
+"""All power that could flow costs this share of a grain, so that it never outweighs one."""
+
+
+@dataclass(frozen=True)
+class Reached:
+    """What a commitment asks in a row and what it can have, in its unit; what else had to be left out for that."""
+
+    row: CommitmentRow
+    required: float
+    attainable: float
+    left_out: tuple[Element, ...]
+
+
+def reached(trouble: Trouble, solving: Solving) -> Iterator[Reached]:
+    """Tell of every row in a conflict how far it can be met; raises CutShort."""
+    scope = trouble.scope
+    named = frozenset().union(*trouble.conflicts)
+    for row in scope.instance.rows:
+        if row.price is None and row_of(row) in named:
+            left_out = _in_the_way(trouble, row_of(row), trouble.tester(solving))
+            least = least_shortfall(scope, row, left_out, solving)
+            required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
+            side = 1.0 if _is_ceiling(row) else -1.0
+            yield Reached(row, required, required + side * least, tuple(left_out))
+
+
+def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozenset[Element]], bool]) -> list[Element]:
+    """List what cannot be met whatever the row asks: all but it is held, conflicting elements one by one."""
+    everything = frozenset(trouble.scope.elements) - {asked}
+    if is_possible(everything):
+        return []
+    conflicting = frozenset().union(*(conflict for conflict in trouble.conflicts if asked not in conflict))
+    kept = everything - conflicting
+    left_out: list[Element] = []
+    if not is_possible(kept):
+        conflicting, kept = everything, frozenset()
+    for element in _facts_first(element for element in trouble.scope.elements if element in conflicting):
+        if is_possible(kept | {element}):
+            kept |= {element}
+        else:
+            left_out.append(element)
+    return left_out
+
+
+def _facts_first(elements: Iterable[Element]) -> list[Element]:
+    return sorted(elements, key=lambda element: SPARED_FIRST.index(element.kind))
+
+
+def least_shortfall(scope: Scope, row: CommitmentRow, left_out: Iterable[Element], solving: Solving) -> float:
+    """Find the least that a row must miss, in its unit, with all but `left_out` held; raises CutShort."""
+    instance = scope.without([element for element in left_out if element != row_of(row)])
+    return solve_shortfall(instance, row, solving)
+
+
+def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> float:
+    """Price one row alone, and find the schedule that misses least of it; to the grain of its unit."""
+    hours, grain = instance.hours, grain_of(row, instance.hours)
+    bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
+    rows = tuple(replace(other, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
+    found = solving.solve(replace(bare, rows=rows, absolute_gap=grain * CLOSE, relative_gap=1e-9))
+    if found.margin is None:
+        raise solving.cut_short()
+    least, most = max(0.0, -found.bound - CLOSE * grain), max(0.0, -found.margin)
+    if isinstance(row, HoursRow):
+        due = whole_intervals(row.due_hours, hours)
+        had = _whole(least, most, lambda missed: (row.due_hours - missed) / hours, due, solving)
+        return max(0.0, row.due_hours - hours * had)
+    if isinstance(row, CeilingRow):
+        return max(0.0, hours * floor((row.allowed_hours + most) / hours + 1e-6) - row.allowed_hours)
+    if most - least > grain:
+        raise solving.cut_short()
+    return ceil(most / grain - 0.5 - CLOSE) * grain
+
+
+def _whole(least: float, most: float, intervals: Callable[[float], float], due: int, solving: Solving) -> int:
+    """Give the number of intervals that is both reached and proven to be the most."""
+    reached_, proven = ceil(intervals(most) - 1e-6), floor(intervals(least) + 2 * CLOSE)
+    if reached_ < proven:
+        raise solving.cut_short()
+    return min(reached_, due)
+
+
+def grain_of(row: CommitmentRow, hours: float) -> float:
+    """Give the step in which a row's figures are told: an interval, or 0.01 MWh."""
+    return hours if isinstance(row, HoursRow | CeilingRow) else GRAIN_MWH
+
+
+def amount_asked(commitment: Commitment, row: CommitmentRow, hours: float) -> float:
+    """Give what a commitment asks in a row, in its unit, with what was counted before."""
+    if isinstance(commitment, HoursAtLeast | HoursAtMost):
+        return commitment.hours
+    if isinstance(commitment, EnergyAtLeast | EnergyAtMost):
+        return commitment.energy_mwh
+    assert isinstance(row, FirmRow | HoldingRow)
+    excused = row.excused if isinstance(row, FirmRow) else frozenset()
+    return hours * float(sum(row.due_mw[t] for t in row.intervals if t not in excused))
+
+
+def _is_ceiling(row: CommitmentRow) -> bool:
+    return isinstance(row, CeilingRow) or (isinstance(row, EnergyRow) and not row.at_least)
+
+
+def unit_of(row: CommitmentRow) -> str:
+    """Give the unit in which a row is told."""
+    if isinstance(row, HoursRow | CeilingRow):
+        return "h"
+    return "MW h" if isinstance(row, HoldingRow) else "MWh"

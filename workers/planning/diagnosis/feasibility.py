@@ -1,0 +1,106 @@
+"""Whether something is possible at all, money aside: the question that a diagnosis asks over and over."""
+
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from workers.planning.flows import FlexibleLoadUnit, RenewableUnit
+from workers.planning.generator import GeneratorUnit
+from workers.planning.instance import Instance
+from workers.planning.joint import Solution, solve_jointly
+from workers.planning.limits import Limits, Watch
+from workers.planning.screening import screen
+from workers.planning.solvers.ending import Stopped
+from workers.planning.store import Store
+from workers.planning.units import Unit
+
+ANY_GAP = 1e9
+"""Any schedule will do."""
+
+
+class CutShort(Exception):  # noqa: N818 - it says that there is no time left, not that something went wrong
+    """Time ran out, or the caller asked to stop, before a question was decided."""
+
+
+@dataclass
+class Solving:
+    """What a diagnosis may take: its limits, until when it may ask solvers, and how often it did."""
+
+    limits: Limits
+    watch: Watch
+    seed: int
+    ends: float
+    solves: int = field(default=0)
+
+    @property
+    def seconds_left(self) -> float:
+        """Seconds until the end; below zero there is none."""
+        return self.ends - self.limits.clock()
+
+    def until(self, share: float) -> "Solving":
+        """Give a budget that ends after a share of what is left."""
+        return replace(self, ends=self.limits.clock() + max(self.seconds_left, 0.0) * share, solves=0)
+
+    def solve(self, instance: Instance) -> Solution:
+        """Solve an instance with the time left; raises CutShort where there is none."""
+        if self.seconds_left <= 0 or self.watch.is_stop_asked():
+            raise CutShort("no time left")
+        self.solves += 1
+        return solve_jointly(instance, self.limits, self.watch, seed=self.seed, seconds=self.seconds_left)
+
+    @staticmethod
+    def cut_short() -> CutShort:
+        """Say that a question is not decided."""
+        return CutShort("neither a schedule nor a proof")
+
+    def is_possible(self, instance: Instance) -> bool:
+        """Tell whether an instance has any schedule; raises CutShort where time does not decide it."""
+        if screen(instance):
+            return False
+        if not instance.units and not instance.rows:
+            return True
+        found = self.solve(without_money(instance))
+        if found.plans is not None:
+            return True
+        if found.stopped is Stopped.INFEASIBLE:
+            return False
+        raise self.cut_short()
+
+
+def without_money(instance: Instance, small: float = 1.0) -> Instance:
+    """Drop all money and all priced rows; power flowing costs `small` per MWh, so that nothing is burned for nothing.
+
+    One price at which charging costs and discharging wears more than it earns: no answer gains by doing both at once.
+    """
+    price = np.full(instance.intervals, small)
+    free_of = {"export_fee_per_mwh": 0.0, "import_fee_per_mwh": 0.0, "peak_import_charge_per_mw": 0.0}
+    nothing = np.zeros(instance.intervals)
+    return replace(
+        instance,
+        buy=price,
+        sell=price,
+        units=tuple(_unpriced(unit, small) for unit in instance.units),
+        meters=tuple(replace(meter, position_mw=nothing, **free_of) for meter in instance.meters),
+        fleet=replace(instance.fleet, position_mw=nothing),
+        rows=tuple(row for row in instance.rows if row.price is None),
+        products=tuple(replace(product, price_per_mw_per_hour=nothing) for product in instance.products),
+        relative_gap=ANY_GAP,
+        absolute_gap=0.0,
+    )
+
+
+def _unpriced(unit: Unit, small: float) -> Unit:
+    if isinstance(unit, Store):
+        return replace(unit, wear_cost_per_mwh=2 * small, final_value_per_mwh=0.0)
+    if isinstance(unit, GeneratorUnit):
+        return replace(unit, constant_per_hour=0.0, linear_per_mwh=0.0, quadratic_per_mw2h=0.0, start_costs=())
+    if isinstance(unit, RenewableUnit):
+        return replace(unit, cost_per_mwh=0.0)
+    assert isinstance(unit, FlexibleLoadUnit)
+    return unit
+
+
+def most_energy(instance: Instance) -> float:
+    """Give the most energy that could flow in the window, MWh."""
+    power = sum((unit.most_out_mw + unit.most_in_mw for unit in instance.units), np.zeros(instance.intervals))
+    return float(power.sum()) * instance.hours

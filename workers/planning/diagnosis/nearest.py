@@ -1,0 +1,177 @@
+"""The schedule that comes nearest: least missing in total, then the best margin at that.
+
+Rows, targets and limits are priced, each MWh missing alike (an hour at a threshold counts as the energy it stands for);
+a connection is exceeded only where nothing else helps. What is then missing is asked no more, and the rest is planned
+for money as ever. The audit judges it by the request relaxed by what is listed as missing.
+"""
+
+from collections.abc import Callable, Collection, Iterator, Sequence
+from dataclasses import dataclass, replace
+from functools import partial
+
+from schemas.diagnosis import Shortfall
+from schemas.job import ScheduleJob, Target, TodaysLimits
+from workers.planning.assembly import UnitPlan
+from workers.planning.diagnosis.again import Planner, choice_of
+from workers.planning.diagnosis.elements import SIDES, words_of
+from workers.planning.diagnosis.feasibility import Solving, most_energy, without_money
+from workers.planning.diagnosis.scope import Question
+from workers.planning.diagnosis.shortfall import ROOM, final_energy, lowered_meter, lowered_row
+from workers.planning.instance import Instance
+from workers.planning.methods import Choice, Found
+from workers.planning.parts import independent_parts
+from workers.planning.rows import CeilingRow, CommitmentRow, HoursRow
+from workers.planning.solvers.ending import Stopped
+from workers.planning.store import Store
+from workers.planning.units import Unit
+
+EXCESS_PRICE = 1000.0
+"""What a MWh beyond a connection's limit counts, against 1 for a MWh of a commitment or a target."""
+
+WORTH_NAMING = 1e-6
+"""Less is within the audit's tolerance, MWh or hours."""
+
+GRAIN_MWH = 1e-3
+"""The total that is missing is the least to this much, MWh."""
+
+PRICES = {
+    "hours_at_least": "shortfall_price_per_hour",
+    "hours_at_most": "shortfall_price_per_hour",
+    "firm_delivery": "shortfall_price_per_mwh",
+    "energy_at_least": "shortfall_price_per_mwh",
+    "energy_at_most": "shortfall_price_per_mwh",
+    "reserve_holding": "shortfall_price_per_mw_per_hour",
+}
+
+
+@dataclass(frozen=True)
+class Nearest:
+    """Parts as they were solved, what each misses, and the request relaxed by just that."""
+
+    job: ScheduleJob
+    choice: Choice
+    found: Found
+    missing: tuple[Shortfall, ...]
+
+
+def key_of(part: Instance) -> tuple[str, ...]:
+    """Name an independent part by its plants and meters."""
+    return tuple(unit.id for unit in part.units) + tuple(meter.id for meter in part.meters)
+
+
+def nearest(
+    question: Question, infeasible: Collection[tuple[str, ...]], planner: Planner, solving: Solving
+) -> Nearest | None:
+    """Find the nearest schedule; None where what is never priced leaves none. Raises CutShort."""
+    originals = independent_parts(question.instance)
+    parts, solutions, job = [], [], question.job
+    missing: list[Shortfall] = []
+    for original in originals:
+        if key_of(original) in infeasible:
+            part = _lowered(original, solving)
+            if part is None:
+                return None
+            solution = solving.solve(part)
+        else:
+            part, solution = original, planner.solution(original, solving)
+        if solution.plans is None:
+            raise solving.cut_short()
+        parts.append(part)
+        solutions.append(solution)
+        for shortfall, relax in _missing(original, solution.plans):
+            missing.append(shortfall)
+            job = relax(job)
+    choice = choice_of(tuple(parts))
+    return Nearest(job, choice, Found(choice, tuple(solutions)), tuple(missing))
+
+
+def _lowered(part: Instance, solving: Solving) -> Instance | None:
+    """Ask of a part no more than can be had with the least missing in total; None where nothing can."""
+    bare = without_money(part, GRAIN_MWH / 10 / (3 * most_energy(part) + 1))
+    found = solving.solve(
+        replace(
+            bare,
+            rows=tuple(replace(row, price=_weight(row)) for row in bare.rows),
+            units=tuple(replace(u, target_price=1.0) if isinstance(u, Store) else u for u in bare.units),
+            meters=tuple(replace(meter, excess_price=EXCESS_PRICE) for meter in bare.meters),
+            fleet=replace(bare.fleet, excess_price=EXCESS_PRICE),
+            relative_gap=1e-6,
+            absolute_gap=GRAIN_MWH,
+        )
+    )
+    if found.stopped is Stopped.INFEASIBLE:
+        return None
+    if found.plans is None:
+        raise solving.cut_short()
+    plans = found.plans
+    return replace(
+        part,
+        rows=tuple(lowered_row(row, plans, part.hours)[0] if row.price is None else row for row in part.rows),
+        units=tuple(_lowered_unit(unit, plan, part.hours) for unit, plan in zip(part.units, plans, strict=True)),
+        meters=tuple(lowered_meter(meter, plans, part)[0] for meter in part.meters),
+        fleet=lowered_meter(part.fleet, plans, part)[0],
+    )
+
+
+def _weight(row: CommitmentRow) -> float:
+    """Weigh an hour missing as the energy it stands for, all else by MWh."""
+    if isinstance(row, HoursRow):
+        return max(row.threshold_mw, 1e-3)
+    return max(row.threshold_mw, 1.0) if isinstance(row, CeilingRow) else 1.0
+
+
+def _lowered_unit(unit: Unit, plan: UnitPlan, hours: float) -> Unit:
+    if not isinstance(unit, Store):
+        return unit
+    reached = final_energy(unit, plan, hours)
+    if reached >= unit.final_floor_mwh - ROOM:
+        return unit
+    return replace(unit, final_floor_mwh=max(reached - ROOM, 0.0))
+
+
+Relaxing = tuple[Shortfall, Callable[[ScheduleJob], ScheduleJob]]
+
+
+def _missing(part: Instance, plans: Sequence[UnitPlan]) -> Iterator[Relaxing]:
+    """List what a schedule misses of a part, each with the change of the request that asks no more than is there."""
+    for row in part.rows:
+        _, amount, unit = lowered_row(row, plans, part.hours)
+        if row.price is None and amount > WORTH_NAMING:
+            text = f"{words_of(row)}; {amount:.4g} {unit} missing"
+            shortfall = Shortfall(
+                pointer=row.pointer, text=text, asset=row.asset, day=row.day, amount=round(amount, 6), unit=unit
+            )
+            yield shortfall, partial(_with_price, row.commitment)
+    for unit, plan in zip(part.units, plans, strict=True):
+        if isinstance(unit, Store):
+            reached = final_energy(unit, plan, part.hours)
+            amount = unit.final_floor_mwh - reached
+            if amount > WORTH_NAMING:
+                text = f"{unit.id} ends with {reached:.4g} MWh, {amount:.4g} MWh below its target"
+                pointer = f"/targets/{unit.id}/final_stored_mwh"
+                shortfall = Shortfall(pointer=pointer, text=text, asset=unit.id, amount=round(amount, 6), unit="MWh")
+                yield shortfall, partial(_with_target, unit.id, max(reached - WORTH_NAMING, 0.0))
+    for meter in (*part.meters, part.fleet):
+        raised, exceeded = lowered_meter(meter, plans, part)
+        for side, amount in exceeded:
+            text = f"{SIDES[side]} of {meter.id} exceeded by up to {amount:.4g} MW"
+            place = f"/limits/{meter.id}/{side}"
+            shortfall = Shortfall(pointer=place, text=text, amount=round(amount, 6), unit="MW")
+            yield shortfall, partial(_with_limit, meter.id, side, [float(v) for v in getattr(raised, side)])
+
+
+def _with_price(number: int, job: ScheduleJob) -> ScheduleJob:
+    commitments = list(job.commitments)
+    kind = commitments[number].kind
+    commitments[number] = commitments[number].model_copy(update={PRICES[kind]: 0.0})
+    return job.model_copy(update={"commitments": commitments})
+
+
+def _with_target(asset: str, final_mwh: float, job: ScheduleJob) -> ScheduleJob:
+    target = job.targets.get(asset, Target()).model_copy(update={"final_stored_mwh": final_mwh})
+    return job.model_copy(update={"targets": {**job.targets, asset: target}})
+
+
+def _with_limit(meter: str, side: str, limit_mw: list[float], job: ScheduleJob) -> ScheduleJob:
+    todays = job.limits.get(meter, TodaysLimits()).model_copy(update={side: limit_mw})
+    return job.model_copy(update={"limits": {**job.limits, meter: todays}})

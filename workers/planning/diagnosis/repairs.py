@@ -1,0 +1,69 @@
+"""Repairs: cures written as patches of the request, planned once more, and only then offered."""
+
+from collections.abc import Iterator, Sequence
+
+from schemas.diagnosis import Change, Repair
+from workers.planning.diagnosis.again import Planner
+from workers.planning.diagnosis.cures import Cure, Move
+from workers.planning.diagnosis.feasibility import Solving
+from workers.planning.diagnosis.levers import Values
+from workers.planning.diagnosis.patches import document_of, patch_of, patched_job
+from workers.planning.diagnosis.scope import Question
+
+MOST_REPAIRS = 12
+
+
+def repairs_of(
+    question: Question, cures: Sequence[Sequence[Cure]], planner: Planner, solving: Solving
+) -> Iterator[Repair]:
+    """Plan the request with each cure (one of every part that needs one) in place; raises CutShort."""
+    if not cures or not all(cures):
+        return
+    document = document_of(question.job)
+    for moves in _together(cures):
+        values: Values = {}
+        for move in moves:
+            values |= move.values
+        operations = patch_of(document, values)
+        schedule = planner.plan(patched_job(document, operations), solving)
+        if schedule is None or schedule.margin_bound is None:
+            continue
+        changes = [_change(move) for move in moves]
+        yield Repair(
+            text="; ".join(move.lever.words(move.step) for move in moves),
+            change=changes[0],
+            changes=changes,
+            patch=operations,
+            verified=True,
+            margin=schedule.margin,
+            margin_bound=schedule.margin_bound,
+        )
+
+
+def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Move]]:
+    """Join one cure of every part: the first of each, then each further one of a part with the first of the others."""
+    first = [of_part[0] for of_part in cures]
+    yield _joined(first)
+    count = 1
+    for number, of_part in enumerate(cures):
+        for cure in of_part[1:]:
+            yield _joined([*first[:number], cure, *first[number + 1 :]])
+            count += 1
+            if count == MOST_REPAIRS:
+                return
+
+
+def _joined(cures: Sequence[Cure]) -> list[Move]:
+    """Put moves of several parts side by side; of two of the same lever the further one stays."""
+    moves: dict[tuple[str, str], Move] = {}
+    for move in (move for cure in cures for move in cure):
+        place = (move.lever.pointer, move.lever.unit)
+        if place not in moves or moves[place].step < move.step:
+            moves[place] = move
+    return list(moves.values())
+
+
+def _change(move: Move) -> Change:
+    lever = move.lever
+    changed = {"from": lever.shown(0), "to": lever.shown(move.step)}
+    return Change.model_validate({"lever": lever.name, "pointer": lever.pointer, "unit": lever.unit, **changed})
