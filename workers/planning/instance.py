@@ -26,8 +26,8 @@ class Meter:
     """One meter: a site, or an asset without one.
 
     `load_mw` is what its fixed loads and standby loads draw, T values, positive out of the grid; `position_mw`
-    what was sold already, positive into it. Limits are T values, infinite where there is none; `excess_price` is what a MW
-    beyond them costs per hour where a diagnosis looks for the nearest schedule (None: they bind).
+    what was sold already, positive into it. Limits are T values, infinite where there is none; `excess_price` is what a
+    MW beyond them costs per hour where a diagnosis looks for the nearest schedule (None: they bind).
     """
 
     id: str

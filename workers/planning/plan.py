@@ -16,6 +16,7 @@ from workers.planning.diagnosis.diagnose import Findings, diagnose
 from workers.planning.diagnosis.feasibility import Solving
 from workers.planning.diagnosis.report import diagnosis_of, nearest_schedule
 from workers.planning.diagnosis.scope import Question
+from workers.planning.earlier import earlier_of
 from workers.planning.extraction import decision_of
 from workers.planning.instance import Instance, instance_of
 from workers.planning.limits import Limits, Unwatched, Watch
@@ -37,8 +38,8 @@ class PlanningError(Exception):
         self.violations = violations
 
 
-def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
-    """Plan a validated job whose documents are inline.
+def plan(job: Job, limits: Limits, watch: Watch | None = None, *, earlier: Schedule | None = None) -> Answer:
+    """Plan a validated job whose documents are inline; the search begins from an `earlier` schedule where that fits.
 
     Raises Unsupported for what cannot be planned yet, PlanningError where no answer can be trusted. Infeasible and out
     of time are answers.
@@ -55,7 +56,8 @@ def plan(job: Job, limits: Limits, watch: Watch | None = None) -> Answer:
         return _diagnosed(job, instance, [], limits, watch)
     choice = choose(instance, job.method)
     watch.progress("solving", 0.0)
-    found = solve(choice, limits, watch, seed=job.seed)
+    start = None if earlier is None else earlier_of(instance, earlier.assets)
+    found = solve(choice, limits, watch, seed=job.seed, earlier=start)
     if found.infeasible_parts:
         return _diagnosed(job, instance, found.infeasible_parts, limits, watch)
     if not found.has_schedule:

@@ -142,7 +142,7 @@ def test_several_impossible_commitments_are_all_named() -> None:
     assert {"/commitments/0", "/commitments/1"} <= named
 
 
-def test_a_conflict_that_only_a_solver_sees_names_the_commitments_of_that_part() -> None:
+def test_a_conflict_that_only_a_solver_sees_names_what_cannot_hold_together() -> None:
     # Each hour could be held; all of them, with the pause that minimum rest demands, cannot.
     battery = store(min_discharge_mw=0.5, min_rest_hours=2, charge_limit_mw=0.0)
     outage = {
@@ -155,8 +155,9 @@ def test_a_conflict_that_only_a_solver_sees_names_the_commitments_of_that_part()
     )  # fmt: skip
     diagnosis = refused(document)
     assert "quay-b1" in diagnosis.summary
-    assert [member.pointer for member in diagnosis.conflicts[0].members] == ["/commitments/0"]
-    assert not diagnosis.conflicts[0].irreducible
+    named = {member.pointer for member in diagnosis.conflicts[0].members}
+    assert named == {"/commitments/0", "/outages/0", "/fleet/assets/0/min_rest_hours"}
+    assert diagnosis.conflicts[0].irreducible
 
 
 def test_fixed_loads_alone_are_settled() -> None:

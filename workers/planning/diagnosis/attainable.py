@@ -39,7 +39,7 @@ def reached(trouble: Trouble, solving: Solving) -> Iterator[Reached]:
             left_out = _in_the_way(trouble, row_of(row), trouble.tester(solving))
             least = least_shortfall(scope, row, left_out, solving)
             required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
-            side = 1.0 if _is_ceiling(row) else -1.0
+            side = 1.0 if is_ceiling(row) else -1.0
             yield Reached(row, required, required + side * least, tuple(left_out))
 
 
@@ -115,7 +115,8 @@ def amount_asked(commitment: Commitment, row: CommitmentRow, hours: float) -> fl
     return hours * float(sum(row.due_mw[t] for t in row.intervals if t not in excused))
 
 
-def _is_ceiling(row: CommitmentRow) -> bool:
+def is_ceiling(row: CommitmentRow) -> bool:
+    """Tell whether a row asks for no more than so much."""
     return isinstance(row, CeilingRow) or (isinstance(row, EnergyRow) and not row.at_least)
 
 

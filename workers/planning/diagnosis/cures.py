@@ -7,7 +7,8 @@ from itertools import combinations
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.enumeration import shrink
 from workers.planning.diagnosis.feasibility import Solving
-from workers.planning.diagnosis.levers import Lever, Values, levers_of
+from workers.planning.diagnosis.levers import levers_of
+from workers.planning.diagnosis.levers.lever import Lever, Values
 from workers.planning.diagnosis.localise import Trouble
 
 MOST_LEVERS_TOGETHER = 4

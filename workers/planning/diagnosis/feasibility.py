@@ -6,13 +6,13 @@ import numpy as np
 
 from workers.planning.flows import FlexibleLoadUnit, RenewableUnit
 from workers.planning.generator import GeneratorUnit
-from workers.planning.instance import Instance
+from workers.planning.instance import Instance, Meter
 from workers.planning.joint import Solution, solve_jointly
 from workers.planning.limits import Limits, Watch
 from workers.planning.screening import screen
 from workers.planning.solvers.ending import Stopped
 from workers.planning.store import Store
-from workers.planning.units import Unit
+from workers.planning.units import Floats, Unit
 
 ANY_GAP = 1e9
 """Any schedule will do."""
@@ -73,19 +73,28 @@ def without_money(instance: Instance, small: float = 1.0) -> Instance:
     One price at which charging costs and discharging wears more than it earns: no answer gains by doing both at once.
     """
     price = np.full(instance.intervals, small)
-    free_of = {"export_fee_per_mwh": 0.0, "import_fee_per_mwh": 0.0, "peak_import_charge_per_mw": 0.0}
     nothing = np.zeros(instance.intervals)
     return replace(
         instance,
         buy=price,
         sell=price,
         units=tuple(_unpriced(unit, small) for unit in instance.units),
-        meters=tuple(replace(meter, position_mw=nothing, **free_of) for meter in instance.meters),
+        meters=tuple(_without_fees(meter, nothing) for meter in instance.meters),
         fleet=replace(instance.fleet, position_mw=nothing),
         rows=tuple(row for row in instance.rows if row.price is None),
         products=tuple(replace(product, price_per_mw_per_hour=nothing) for product in instance.products),
         relative_gap=ANY_GAP,
         absolute_gap=0.0,
+    )
+
+
+def _without_fees(meter: Meter, nothing: Floats) -> Meter:
+    return replace(
+        meter,
+        position_mw=nothing,
+        export_fee_per_mwh=0.0,
+        import_fee_per_mwh=0.0,
+        peak_import_charge_per_mw=0.0,
     )
 
 

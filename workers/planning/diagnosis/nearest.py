@@ -9,15 +9,21 @@ from collections.abc import Callable, Collection, Iterator, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 
+import numpy as np
+
 from schemas.diagnosis import Shortfall
-from schemas.job import ScheduleJob, Target, TodaysLimits
+from schemas.job import ScheduleJob
+from schemas.quantities import LARGEST
 from workers.planning.assembly import UnitPlan
 from workers.planning.diagnosis.again import Planner, choice_of
+from workers.planning.diagnosis.attainable import is_ceiling
 from workers.planning.diagnosis.elements import SIDES, words_of
 from workers.planning.diagnosis.feasibility import Solving, most_energy, without_money
+from workers.planning.diagnosis.levers.connections import with_limit
+from workers.planning.diagnosis.levers.energy import with_target
 from workers.planning.diagnosis.scope import Question
-from workers.planning.diagnosis.shortfall import ROOM, final_energy, lowered_meter, lowered_row
-from workers.planning.instance import Instance
+from workers.planning.diagnosis.shortfall import ROOM, Lowered, Raised, final_energy, lowered, raised
+from workers.planning.instance import Instance, Meter
 from workers.planning.methods import Choice, Found
 from workers.planning.parts import independent_parts
 from workers.planning.rows import CeilingRow, CommitmentRow, HoursRow
@@ -67,13 +73,10 @@ def nearest(
     parts, solutions, job = [], [], question.job
     missing: list[Shortfall] = []
     for original in originals:
-        if key_of(original) in infeasible:
-            part = _lowered(original, solving)
-            if part is None:
-                return None
-            solution = solving.solve(part)
-        else:
-            part, solution = original, planner.solution(original, solving)
+        part = _lowered(original, solving) if key_of(original) in infeasible else original
+        if part is None:
+            return None
+        solution = planner.solution(part, solving)
         if solution.plans is None:
             raise solving.cut_short()
         parts.append(part)
@@ -106,10 +109,10 @@ def _lowered(part: Instance, solving: Solving) -> Instance | None:
     plans = found.plans
     return replace(
         part,
-        rows=tuple(lowered_row(row, plans, part.hours)[0] if row.price is None else row for row in part.rows),
+        rows=tuple(lowered(row, plans, part.hours).row if row.price is None else row for row in part.rows),
         units=tuple(_lowered_unit(unit, plan, part.hours) for unit, plan in zip(part.units, plans, strict=True)),
-        meters=tuple(lowered_meter(meter, plans, part)[0] for meter in part.meters),
-        fleet=lowered_meter(part.fleet, plans, part)[0],
+        meters=tuple(raised(meter, plans, part).meter for meter in part.meters),
+        fleet=raised(part.fleet, plans, part).meter,
     )
 
 
@@ -135,29 +138,40 @@ Relaxing = tuple[Shortfall, Callable[[ScheduleJob], ScheduleJob]]
 def _missing(part: Instance, plans: Sequence[UnitPlan]) -> Iterator[Relaxing]:
     """List what a schedule misses of a part, each with the change of the request that asks no more than is there."""
     for row in part.rows:
-        _, amount, unit = lowered_row(row, plans, part.hours)
-        if row.price is None and amount > WORTH_NAMING:
-            text = f"{words_of(row)}; {amount:.4g} {unit} missing"
-            shortfall = Shortfall(
-                pointer=row.pointer, text=text, asset=row.asset, day=row.day, amount=round(amount, 6), unit=unit
-            )
-            yield shortfall, partial(_with_price, row.commitment)
+        if row.price is None:
+            yield from _missing_of_row(row, lowered(row, plans, part.hours))
     for unit, plan in zip(part.units, plans, strict=True):
         if isinstance(unit, Store):
-            reached = final_energy(unit, plan, part.hours)
-            amount = unit.final_floor_mwh - reached
-            if amount > WORTH_NAMING:
-                text = f"{unit.id} ends with {reached:.4g} MWh, {amount:.4g} MWh below its target"
-                pointer = f"/targets/{unit.id}/final_stored_mwh"
-                shortfall = Shortfall(pointer=pointer, text=text, asset=unit.id, amount=round(amount, 6), unit="MWh")
-                yield shortfall, partial(_with_target, unit.id, max(reached - WORTH_NAMING, 0.0))
+            yield from _missing_of_target(unit, final_energy(unit, plan, part.hours))
     for meter in (*part.meters, part.fleet):
-        raised, exceeded = lowered_meter(meter, plans, part)
-        for side, amount in exceeded:
-            text = f"{SIDES[side]} of {meter.id} exceeded by up to {amount:.4g} MW"
-            place = f"/limits/{meter.id}/{side}"
-            shortfall = Shortfall(pointer=place, text=text, amount=round(amount, 6), unit="MW")
-            yield shortfall, partial(_with_limit, meter.id, side, [float(v) for v in getattr(raised, side)])
+        yield from _beyond_limits(meter, raised(meter, plans, part))
+
+
+def _missing_of_row(row: CommitmentRow, less: Lowered) -> Iterator[Relaxing]:
+    if less.missing > WORTH_NAMING:
+        text = f"{words_of(row)}; {less.missing:.4g} {less.unit} {'over' if is_ceiling(row) else 'missing'}"
+        amount = round(less.missing, 6)
+        shortfall = Shortfall(
+            pointer=row.pointer, text=text, asset=row.asset, day=row.day, amount=amount, unit=less.unit
+        )
+        yield shortfall, partial(_with_price, row.commitment)
+
+
+def _missing_of_target(store: Store, reached: float) -> Iterator[Relaxing]:
+    missing = store.final_floor_mwh - reached
+    if missing > WORTH_NAMING:
+        text = f"{store.id} ends with {reached:.4g} MWh, {missing:.4g} MWh below its target"
+        pointer = f"/targets/{store.id}/final_stored_mwh"
+        shortfall = Shortfall(pointer=pointer, text=text, asset=store.id, amount=round(missing, 6), unit="MWh")
+        yield shortfall, partial(with_target, asset=store.id, final_mwh=max(reached - WORTH_NAMING, 0.0))
+
+
+def _beyond_limits(meter: Meter, higher: Raised) -> Iterator[Relaxing]:
+    for side, amount in higher.exceeded.items():
+        text = f"{SIDES[side]} of {meter.id} exceeded by up to {amount:.4g} MW"
+        shortfall = Shortfall(pointer=f"/limits/{meter.id}/{side}", text=text, amount=round(amount, 6), unit="MW")
+        limit_mw = [float(value) if np.isfinite(value) else LARGEST for value in getattr(higher.meter, side)]
+        yield shortfall, partial(with_limit, meter=meter.id, side=side, limit_mw=limit_mw)
 
 
 def _with_price(number: int, job: ScheduleJob) -> ScheduleJob:
@@ -165,13 +179,3 @@ def _with_price(number: int, job: ScheduleJob) -> ScheduleJob:
     kind = commitments[number].kind
     commitments[number] = commitments[number].model_copy(update={PRICES[kind]: 0.0})
     return job.model_copy(update={"commitments": commitments})
-
-
-def _with_target(asset: str, final_mwh: float, job: ScheduleJob) -> ScheduleJob:
-    target = job.targets.get(asset, Target()).model_copy(update={"final_stored_mwh": final_mwh})
-    return job.model_copy(update={"targets": {**job.targets, asset: target}})
-
-
-def _with_limit(meter: str, side: str, limit_mw: list[float], job: ScheduleJob) -> ScheduleJob:
-    todays = job.limits.get(meter, TodaysLimits()).model_copy(update={side: limit_mw})
-    return job.model_copy(update={"limits": {**job.limits, meter: todays}})

@@ -6,7 +6,7 @@ from typing import Any
 
 from schemas.job import Job, ScheduleJob
 from schemas.reading import canonical, read_job
-from workers.planning.diagnosis.levers import Values
+from workers.planning.diagnosis.levers.lever import Values
 
 Operation = dict[str, Any]
 OF_OTHER_TASKS = ("commitment", "step_hours")

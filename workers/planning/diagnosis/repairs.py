@@ -6,7 +6,7 @@ from schemas.diagnosis import Change, Repair
 from workers.planning.diagnosis.again import Planner
 from workers.planning.diagnosis.cures import Cure, Move
 from workers.planning.diagnosis.feasibility import Solving
-from workers.planning.diagnosis.levers import Values
+from workers.planning.diagnosis.levers.lever import Values
 from workers.planning.diagnosis.patches import document_of, patch_of, patched_job
 from workers.planning.diagnosis.scope import Question
 

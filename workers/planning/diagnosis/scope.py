@@ -116,7 +116,7 @@ def _edits(job: ScheduleJob, left_out: Collection[Element], outages: tuple[int, 
         if element.kind == "rule":
             rules.setdefault(element.subject, {})[element.name] = None if element.name in _NONE_WITHOUT else 0.0
     gone = {(element.kind, element.subject, element.name or element.number) for element in left_out}
-    open_sides = {(subject, name) for kind, subject, name in gone if kind == "limit"}
+    open_sides = {(element.subject, element.name) for element in left_out if element.kind == "limit"}
     fleet = _fleet_of(job)
     yield "fleet", _without_limits(fleet, open_sides, rules)
     yield (

@@ -6,7 +6,10 @@ from workers.planning.diagnosis.attainable import Reached, unit_of
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.localise import Conflict, Trouble
 from workers.planning.diagnosis.scope import row_of
+from workers.planning.instance import Instance
+from workers.planning.rows import CommitmentRow, HoursRow
 from workers.planning.screening import screen
+from workers.planning.store import Store, whole_intervals
 
 MOST_SENTENCES = 6
 
@@ -25,14 +28,28 @@ def summary_of(troubles: Iterable[Trouble], reached: Sequence[Reached]) -> str:
 
 
 def _sentence(trouble: Trouble, conflict: Conflict, reached: Sequence[Reached]) -> str:
-    """Say why a conflict is one: by arithmetic where that shows it, else by what can be had at most."""
-    alone = trouble.scope.without(frozenset(trouble.scope.elements) - conflict)
-    findings = screen(alone)
+    """Say why a conflict is one: by arithmetic where that shows it, else by what stands against what."""
     had = _had(conflict, reached)
-    if findings:
+    alone = trouble.scope.without(frozenset(trouble.scope.elements) - conflict)
+    if findings := screen(alone):
         return " ".join([findings[0].sentence, *had])
-    members = [element for element in trouble.scope.elements if element in conflict][::-1]
-    return " ".join([f"{_capital(_listed(members))}: these cannot hold together.", *had])
+    members = [element for element in reversed(trouble.scope.elements) if element in conflict]
+    together = "these cannot hold together" if len(members) > 1 else "it cannot be met"
+    physics = [text for row in alone.rows if (text := _energy(alone, row))]
+    return " ".join([f"{_capital(_listed(members))}: {together}.", *physics, *had])
+
+
+def _energy(instance: Instance, row: CommitmentRow) -> str | None:
+    """Weigh the energy that hours of discharge take from a store against what it holds."""
+    only = instance.units[row.units[0]] if row.asset is not None and row.units else None
+    if not isinstance(row, HoursRow) or not isinstance(only, Store) or row.sign < 0:
+        return None
+    due = whole_intervals(row.due_hours, instance.hours) * instance.hours
+    needed = due * row.threshold_mw / only.discharge_efficiency
+    return (
+        f"{due:g} h at {row.threshold_mw:g} MW need {needed:.4g} MWh from {only.id}, which starts with "
+        f"{only.initial_mwh:.4g} MWh and holds at most {only.ceiling_mwh.max():.4g} MWh."
+    )
 
 
 def _had(conflict: Conflict, reached: Sequence[Reached]) -> list[str]:

@@ -7,7 +7,8 @@ s    energy in store at the end of interval t, MWh; s[a,-1] is the initial energ
 c,d  charging and discharging power at the terminals, MW, both >= 0
 h    interval length, hours; f  fraction lost per hour
 
-(2) are the bounds of the columns; where a diagnosis leaves the initial energy open it is one too. Replayed by the audit; the two must not share code.
+(2) are the bounds of the columns; where a diagnosis leaves the initial energy open, that is a column too. Replayed by
+the audit; the two must not share code.
 """
 
 from workers.planning.model import Model
