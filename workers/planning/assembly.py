@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
-from scipy.sparse import vstack
+from scipy.sparse import csr_matrix, vstack
 
 from workers.planning.instance import Instance
 from workers.planning.model import Columns, Model
@@ -100,6 +100,20 @@ class Assembled:
         stays = matrix.integer & (np.abs(values - whole) < WHOLE)
         lower, upper = np.where(stays, whole, matrix.lower), np.where(stays, whole, matrix.upper)
         return replace(self, matrix=replace(matrix, lower=lower, upper=upper, integer=matrix.integer & ~stays))
+
+    def with_margin_at_least(self, margin: float) -> "Assembled":
+        """Ask for a margin: a model without a point then proves that there is none so good."""
+        matrix = self.matrix
+        earns = csr_matrix(matrix.money)
+        return replace(
+            self,
+            matrix=replace(
+                matrix,
+                rows=vstack([matrix.rows, earns], format="csr"),
+                row_lower=np.append(matrix.row_lower, margin - matrix.constant),
+                row_upper=np.append(matrix.row_upper, INFINITE),
+            ),
+        )
 
     def with_modes_as_fractions(self) -> "Assembled":
         """Let the mode columns take any value between 0 and 1."""

@@ -6,6 +6,9 @@ discrete choice and the modes fixed, often within the gap. The quadratic part of
 tangents below it, the exact cost of what is found, more tangents there. Among several plants a narrower model near the
 LP relaxation finds a first schedule, and proves nothing. A relaxation's bound is true, and an infeasible one proves the
 request infeasible.
+
+An earlier schedule of the same plants is tried first: what it decided stays, its powers are settled anew, and where
+the relaxation proves that good enough, nothing else is solved. Otherwise it is in hand from then on.
 """
 
 from dataclasses import dataclass, field, replace
@@ -26,12 +29,13 @@ from workers.planning.assembly import (
     where_mixing_may_pay,
     with_tangents,
 )
+from workers.planning.earlier import as_it_was, is_of_shape, with_its_choices
 from workers.planning.instance import Instance
 from workers.planning.limits import AUDIT_SHARE, Limits, Unwatched, Watch
 from workers.planning.rules import fuel_cost
 from workers.planning.solvers import cp_sat, highs
 from workers.planning.solvers.ending import Ending, Stopped
-from workers.planning.units import Booleans
+from workers.planning.units import Booleans, Floats
 
 INFINITE = float("inf")
 ROUNDS_BEFORE_WHOLE_STORES = 2
@@ -42,6 +46,15 @@ EXACT_ENOUGH = 1e-11
 
 GAP_SHARE_NEAR = 0.5
 """A model near the LP relaxation is solved to this share of the gap: what it loses to the bound comes on top."""
+
+GAP_SHARE_ABOVE = 0.9
+"""Only what is better by this share of the gap is looked for from a start; the rest of the gap is for round-off."""
+
+LITTLE_LEFT_GAP = 1e-9
+"""Where powers are given, little is left to choose, and nothing of it should be given away."""
+
+EARLIER_SHARE = 0.1
+"""Share of the time for the choices of an earlier schedule whose powers are not possible any more."""
 
 MONEY_UNIT = 1.0
 """Gaps are measured against at least one unit of the currency (contract, section 6)."""
@@ -74,10 +87,13 @@ class _Search:
     tangents: list[Tangents] = field(default_factory=list)
     margin: float | None = None
     plans: tuple[UnitPlan, ...] | None = None
+    values: Floats | None = None
     bound: float = INFINITE
+    has_start: bool = False
     rounds: int = 0
     build_seconds: float = 0.0
     solver_seconds: float = 0.0
+    relaxed: Ending | None = None
     last: Stopped = Stopped.OUT_OF_TIME
 
     def assemble(self) -> Assembled:
@@ -96,27 +112,61 @@ class _Search:
         self.bound = min(self.bound, ending.bound)
         return ending
 
+    def solve_above(self, assembled: Assembled) -> Ending:
+        """Solve for what is better than the schedule in hand by more than the gap; nothing there proves the schedule.
+
+        That prunes as a start would, which HiGHS is not given (`solvers.highs.solve`).
+        """
+        assert self.margin is not None
+        enough = self.margin + GAP_SHARE_ABOVE * allowed_gap(self.instance, self.margin)
+        ending = self._run(assembled.with_margin_at_least(enough).matrix, self._left(), self.watch)
+        self.last = Stopped.WITHIN_GAP if ending.stopped is Stopped.INFEASIBLE else ending.stopped
+        self.bound = min(self.bound, max(ending.bound, enough))
+        return ending
+
     def solve_near(self, assembled: Assembled) -> Ending:
         """Solve a model that is narrower than the request's: it may find a schedule, it proves nothing."""
         return self._run(assembled.matrix, self._left(), self.watch, gap_share=GAP_SHARE_NEAR)
 
+    def solve_choices(self, assembled: Assembled) -> Ending:
+        """Solve a model with the choices of an earlier schedule: like a near one, in a share of the time."""
+        seconds = max(EARLIER_SHARE * self._left(), self.limits.seconds * AUDIT_SHARE / 2)
+        return self._run(assembled.matrix, seconds, self.watch, gap_share=GAP_SHARE_NEAR)
+
+    def solve_little(self, assembled: Assembled) -> Ending:
+        """Solve a model that leaves little open, to its optimum; there is time for it even when time has run out."""
+        seconds = self._left_to_hand_over()
+        effort = replace(self._effort(seconds), relative_gap=LITTLE_LEFT_GAP, absolute_gap=LITTLE_LEFT_GAP)
+        ending = highs.solve(assembled.matrix, effort, self.watch)
+        self.solver_seconds += ending.seconds
+        return ending
+
     def _run_cp_sat(self, assembled: Assembled) -> Ending:
         """Solve over whole steps; the bound is the tighter one of that and of the LP relaxation, both true."""
-        relaxed = self._run(assembled.without_integers().matrix, self._left(), self.watch)
-        if relaxed.stopped is Stopped.INFEASIBLE:
-            return relaxed
-        ending = cp_sat.solve(assembled.matrix, self._effort(self._left()), self.watch)
+        if self.relax(assembled).stopped is Stopped.INFEASIBLE:
+            return Ending(Stopped.INFEASIBLE, None, None, -INFINITE, 0.0)
+        ending = cp_sat.solve(assembled.matrix, self._effort(self._left()), self.watch, hint=self.values)
         self.solver_seconds += ending.seconds
-        return replace(ending, bound=min(ending.bound, relaxed.bound))
+        return ending
+
+    def relax(self, assembled: Assembled) -> Ending:
+        """Solve the LP relaxation and take over its bound."""
+        if self.relaxed is None:
+            self.relaxed = self._run(assembled.without_integers().matrix, self._left(), self.watch)
+            self.bound = min(self.bound, self.relaxed.bound)
+        return self.relaxed
 
     def choose_near(self, assembled: Assembled) -> Ending:
         """Let CP-SAT choose where its powers are likely to exist exactly; takes half the time at most."""
-        ending = cp_sat.solve(assembled.matrix, self._effort(self._left() / 2), self.watch, near=True)
+        ending = cp_sat.solve(assembled.matrix, self._effort(self._left() / 2), self.watch, near=True, hint=self.values)
         self.solver_seconds += ending.seconds
         return ending
 
     def _left(self) -> float:
         return self.ends - self.limits.clock()
+
+    def _left_to_hand_over(self) -> float:
+        return max(self._left(), self.limits.seconds * AUDIT_SHARE / 2)
 
     def keep(
         self, assembled: Assembled, ending: Ending, mixed: list[Booleans], *, has_loose_modes: bool = False
@@ -130,11 +180,33 @@ class _Search:
         is_mixed = has_loose_modes or any(where.any() for where in mixed)
         if is_mixed or self._missing_cost(assembled, ending) > 0:
             polished = self._polish(assembled, ending, mixed)
-        if polished is None or polished.values is None or polished.margin is None:
+        if polished is not None:
+            self._take(assembled, polished)
+
+    def keep_earlier(self, assembled: Assembled, ending: Ending) -> None:
+        """Keep the best powers for the choices of an earlier schedule, which is among them.
+
+        Directions stay open where the model has no binary for them, and are closed to what they were where that mixes.
+        """
+        mixed = [np.zeros(self.instance.intervals, dtype=bool) for _ in assembled.columns.stores]
+        for _ in range(ROUNDS_BEFORE_WHOLE_STORES):
+            polished = self._polish(assembled, ending, mixed)
+            if polished is None or polished.values is None:
+                return
+            again = mixed_modes(assembled.columns, polished.values)
+            if not any(where.any() for where in again):
+                self._take(assembled, polished)
+                return
+            mixed = [before | where for before, where in zip(mixed, again, strict=True)]
+        self.keep(assembled, ending, [np.ones_like(where) for where in mixed])
+
+    def _take(self, assembled: Assembled, polished: Ending) -> None:
+        if polished.values is None or polished.margin is None:
             return
         margin = polished.margin - self._missing_cost(assembled, polished)
         if self.margin is None or margin > self.margin:
             self.margin, self.plans = margin, plans_of(assembled.columns, polished.values)
+            self.values = polished.values
         # the relaxation's own outputs lie where its tangents cross, far from these: it takes many rounds to get here
         self.tangents += tangents_at(assembled.columns, polished.values)
 
@@ -144,8 +216,7 @@ class _Search:
             return None
         matrix, best = unmixed(assembled, ending.values, mixed), None
         for _ in range(MOST_TANGENT_ROUNDS):
-            left = max(self._left(), self.limits.seconds * AUDIT_SHARE / 2)
-            found = self._run(matrix, left, Unwatched())
+            found = self._run(matrix, self._left_to_hand_over(), Unwatched())
             if found.values is None or found.margin is None:
                 return best
             best = found
@@ -194,42 +265,79 @@ class _Search:
 
 
 def solve_jointly(
-    instance: Instance, limits: Limits, watch: Watch, *, seed: int, seconds: float, everywhere: bool = False
+    instance: Instance,
+    limits: Limits,
+    watch: Watch,
+    *,
+    seed: int,
+    seconds: float,
+    everywhere: bool = False,
+    earlier: tuple[UnitPlan, ...] | None = None,
 ) -> Solution:
-    """Plan all units of an instance in one model; `everywhere` puts in every binary from the start."""
+    """Plan all units of an instance in one model; `everywhere` puts in every binary from the start.
+
+    `earlier` is what the units did in an earlier schedule; one that does not fit the instance is passed over.
+    """
     apart = [where | np.bool_(everywhere) for where in where_mixing_may_pay(instance)]
     search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds)
-    assembled = search.assemble()
-    if len(instance.units) > 1 and assembled.matrix.integer.any():
-        _first_schedule(search, assembled)
+    _search_jointly(search, earlier)
+    if search.plans is None and search.last is not Stopped.INFEASIBLE:
+        _start_from(search, search.assemble(), earlier)
+    return search.solution()
+
+
+def _search_jointly(search: _Search, earlier: tuple[UnitPlan, ...] | None) -> None:
+    """Search until the best in hand is proven good enough, or time or patience ends."""
+    assembled, several = search.assemble(), len(search.instance.units) > 1
+    if assembled.matrix.integer.any() and (several or earlier is not None):
+        relaxed = search.solve(assembled.without_integers())
+        if relaxed.values is None:
+            return
+        _start_from(search, assembled, earlier)
+        if several and not search.is_proven():
+            _first_schedule(search, assembled, relaxed.values)
         if search.is_proven() or search.last is not Stopped.WITHIN_GAP:
-            return search.solution()
+            return
     while True:
         search.rounds += 1
-        ending = search.solve(assembled)
+        ending = search.solve_above(assembled) if search.has_start and several else search.solve(assembled)
         if ending.values is None:
-            return search.solution()
+            return
         mixed = mixed_modes(assembled.columns, ending.values)
         search.keep(assembled, ending, mixed)
         if search.is_proven() or ending.stopped is not Stopped.WITHIN_GAP or search.rounds == MOST_ROUNDS:
-            return search.solution()
+            return
         if not search.tighten(assembled, ending, mixed):
-            return search.solution()
+            return
         assembled = search.assemble()
 
 
-def solve_by_cp_sat(instance: Instance, limits: Limits, watch: Watch, *, seed: int, seconds: float) -> Solution:
+def solve_by_cp_sat(
+    instance: Instance,
+    limits: Limits,
+    watch: Watch,
+    *,
+    seed: int,
+    seconds: float,
+    earlier: tuple[UnitPlan, ...] | None = None,
+) -> Solution:
     """Plan all units of an instance by CP-SAT, with every binary from the start and the powers settled by an LP.
 
     Where no exact powers exist for what it chose over whole steps, or sizes are beyond whole steps, nothing is in hand.
+    What an earlier schedule decided is proven good enough by the LP relaxation, or hinted at.
     """
     apart = [np.ones(instance.intervals, dtype=bool) for _ in instance.stores]
     search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds, by="cp_sat")
     assembled = search.assemble()
+    if earlier is not None:
+        search.relax(assembled)
+        _start_from(search, assembled, earlier)
+        if search.is_proven():
+            return search.solution()
     try:
         endings = (search.choose_near(assembled), search.solve(assembled))
     except cp_sat.BeyondWholeSteps:
-        return search.solution()
+        return replace(search.solution(), plans=None, margin=None)
     for ending in endings:
         if ending.values is not None and not search.is_proven():
             mixed = mixed_modes(assembled.columns, ending.values)
@@ -237,16 +345,26 @@ def solve_by_cp_sat(instance: Instance, limits: Limits, watch: Watch, *, seed: i
     return search.solution()
 
 
-def _first_schedule(search: _Search, assembled: Assembled) -> None:
+def _start_from(search: _Search, assembled: Assembled, earlier: tuple[UnitPlan, ...] | None) -> None:
+    """Put a schedule with the choices of an earlier one in hand, if the request still allows one."""
+    if earlier is None or not is_of_shape(search.instance, earlier):
+        return
+    kept = search.solve_little(as_it_was(assembled, earlier))
+    if kept.values is None:
+        # its powers are not possible any more; what was on, and which way, may still be
+        kept = search.solve_choices(with_its_choices(assembled, earlier))
+    if kept.values is not None:
+        search.keep_earlier(assembled, kept)
+        search.has_start = search.plans is not None
+
+
+def _first_schedule(search: _Search, assembled: Assembled, relaxed: Floats) -> None:
     """Find a schedule near the LP relaxation: what is whole there stays, the few choices left are a small model.
 
     The relaxation's bound is proven, and often enough; otherwise the schedule is what is in hand if time runs out.
     Where what stays leaves no schedule, the modes as fractions give one.
     """
-    relaxed = search.solve(assembled.without_integers())
-    if relaxed.values is None:
-        return
-    near = search.solve_near(assembled.with_whole_fixed(relaxed.values))
+    near = search.solve_near(assembled.with_whole_fixed(relaxed))
     if near.values is not None:
         search.keep(assembled, near, mixed_modes(assembled.columns, near.values), has_loose_modes=True)
     if search.plans is not None or not any(len(modes.columns) for modes in assembled.modes):
@@ -261,5 +379,9 @@ def is_within_gap(instance: Instance, margin: float, bound: float) -> bool:
     """Tell whether a bound proves a margin good enough; without a finite bound nothing is proven."""
     if not np.isfinite(bound):
         return False
-    allowed = max(instance.absolute_gap, instance.relative_gap * max(abs(margin), MONEY_UNIT))
-    return bound - margin <= allowed * (1 + 1e-6) + 1e-9
+    return bound - margin <= allowed_gap(instance, margin) * (1 + 1e-6) + 1e-9
+
+
+def allowed_gap(instance: Instance, margin: float) -> float:
+    """Give how far above a margin its bound may lie, money."""
+    return max(instance.absolute_gap, instance.relative_gap * max(abs(margin), MONEY_UNIT))

@@ -5,6 +5,8 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from math import inf
 
+from workers.planning.assembly import UnitPlan
+from workers.planning.earlier import Earlier, plans_for
 from workers.planning.instance import Instance
 from workers.planning.joint import Solution, is_within_gap, solve_by_cp_sat, solve_jointly
 from workers.planning.limits import Limits, Watch
@@ -62,6 +64,16 @@ class Found:
         return all(solution.plans is not None for solution in self.solutions)
 
 
+@dataclass(frozen=True)
+class Effort:
+    """What the solve of a part may take and begins from; `careful` puts in every binary from the start."""
+
+    seed: int
+    seconds: float
+    careful: bool = False
+    earlier: tuple[UnitPlan, ...] | None = None
+
+
 def choose(instance: Instance, asked: str) -> Choice:
     """Choose parts and method from the request alone."""
     parts = tuple(independent_parts(instance))
@@ -83,19 +95,27 @@ def _counted(parts: Iterable[Instance]) -> str:
     return f"{len(sizes)} independent part(s), the largest with {max(sizes)} plant(s)"
 
 
-def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: bool = False) -> Found:
-    """Solve every part, side by side on the threads allowed; an infeasible part ends the work early."""
+def solve(
+    choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: bool = False, earlier: Earlier | None = None
+) -> Found:
+    """Solve every part, side by side on the threads allowed; an infeasible part ends the work early.
+
+    What units did in an `earlier` schedule is where the search of a part begins, as far as it has a plan for each of
+    them and the part allows it; a part that time leaves out has that at least.
+    """
     solutions: dict[int, Solution] = {}
     is_over = _over(solutions, limits, watch)
 
     def one(number: int) -> None:
+        part = choice.parts[number]
+        effort = Effort(seed, 0.0, careful, plans_for(part, earlier))
         if is_over():
-            solutions[number] = _nothing(limits)
+            solutions[number] = _in_hand(part, effort, limits, watch)
             return
         waiting = len(choice.parts) - len(solutions)
         share = limits.left_to_solve() * limits.threads / waiting
-        seconds = min(limits.left_to_solve(), LONGEST_SHARE * share)
-        solutions[number] = _one_part(choice, number, limits, watch, seed=seed, seconds=seconds, careful=careful)
+        effort = replace(effort, seconds=min(limits.left_to_solve(), LONGEST_SHARE * share))
+        solutions[number] = solve_part(choice.method, part, limits, watch, effort)
         watch.progress("solving", len(solutions) / len(choice.parts))
 
     if limits.threads == 1 or len(choice.parts) == 1:
@@ -109,19 +129,17 @@ def solve(choice: Choice, limits: Limits, watch: Watch, *, seed: int, careful: b
     return _closed(found, limits, watch, seed)
 
 
-def _one_part(
-    choice: Choice, number: int, limits: Limits, watch: Watch, *, seed: int, seconds: float, careful: bool
-) -> Solution:
-    """Solve one part by the method chosen; where CP-SAT leaves no schedule in its share, the joint model has a go."""
-    part = choice.parts[number]
-    if choice.method == "cp_sat" and not careful:
+def solve_part(method: str, part: Instance, limits: Limits, watch: Watch, effort: Effort) -> Solution:
+    """Solve one part by a method; where CP-SAT leaves no schedule in its share, the joint model has a go."""
+    seed, seconds, earlier = effort.seed, effort.seconds, effort.earlier
+    if method == "cp_sat" and not effort.careful:
         ends = limits.clock() + seconds
-        found = solve_by_cp_sat(part, limits, watch, seed=seed, seconds=seconds * CP_SAT_SHARE)
+        found = solve_by_cp_sat(part, limits, watch, seed=seed, seconds=seconds * CP_SAT_SHARE, earlier=earlier)
         if found.plans is not None or found.stopped is Stopped.INFEASIBLE or watch.is_stop_asked():
             return found
-        joint = solve_jointly(part, limits, watch, seed=seed, seconds=ends - limits.clock())
+        joint = solve_jointly(part, limits, watch, seed=seed, seconds=ends - limits.clock(), earlier=earlier)
         return replace(_better(found, joint), fell_back=True)
-    return solve_jointly(part, limits, watch, seed=seed, seconds=seconds, everywhere=careful)
+    return solve_jointly(part, limits, watch, seed=seed, seconds=seconds, everywhere=effort.careful, earlier=earlier)
 
 
 def _over(solutions: dict[int, Solution], limits: Limits, watch: Watch) -> Callable[[], bool]:
@@ -130,6 +148,13 @@ def _over(solutions: dict[int, Solution], limits: Limits, watch: Watch) -> Calla
         return proven or watch.is_stop_asked() or limits.left_to_solve() <= 0
 
     return is_over
+
+
+def _in_hand(part: Instance, effort: Effort, limits: Limits, watch: Watch) -> Solution:
+    """Give what an earlier schedule leaves of a part that is not searched, while there is time to look at it."""
+    if effort.earlier is not None and limits.left_to_solve() <= 0 < limits.left_to_hand_over():
+        return solve_jointly(part, limits, watch, seed=effort.seed, seconds=0.0, earlier=effort.earlier)
+    return _nothing(limits)
 
 
 def _nothing(limits: Limits) -> Solution:

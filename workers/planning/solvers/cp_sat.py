@@ -54,10 +54,11 @@ class BeyondWholeSteps(Exception):  # noqa: N818 - it says that another method i
     """A model that cannot be put in whole steps."""
 
 
-def solve(matrix: Matrix, effort: Effort, watch: Watch, *, near: bool = False) -> Ending:
+def solve(matrix: Matrix, effort: Effort, watch: Watch, *, near: bool = False, hint: Floats | None = None) -> Ending:
     """Maximise over whole steps; `values` are near a feasible point, not feasible, and `margin` is theirs.
 
-    With `near`, equations alone are loosened: nothing is proven, neither by the bound (infinite) nor by failing.
+    With `near`, equations alone are loosened: nothing is proven, neither by the bound (infinite) nor by failing. A
+    `hint`, a value for each column, is where the search looks first; it need not be feasible.
 
     Raises BeyondWholeSteps where a column has no finite bound or sizes differ by more than whole numbers can hold,
     SolverError for a word without a meaning.
@@ -75,6 +76,9 @@ def solve(matrix: Matrix, effort: Effort, watch: Watch, *, near: bool = False) -
         _add_row(model, variables, matrix, steps, k, near=near)
     whole, scale, slack = _whole(matrix.money, steps, matrix)
     model.maximize(cp_model.LinearExpr.weighted_sum(variables, whole.tolist()))
+    if hint is not None:
+        for variable, step in zip(variables, np.round(hint / steps.size).astype(np.int64).tolist(), strict=True):
+            model.add_hint(variable, step)
     solver = cp_model.CpSolver()
     solver.parameters.num_workers = 1
     solver.parameters.linearization_level = 2
