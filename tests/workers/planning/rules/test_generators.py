@@ -153,6 +153,12 @@ def test_after_a_trip_the_next_start_is_paid(cost: float, margin: float) -> None
     assert planned(running(document)).margin == pytest.approx(margin)
 
 
+def test_half_a_start_during_a_trip_does_not_make_the_next_one_cheap() -> None:
+    by_hours_off = steady(start_costs=[{"after_hours_off": 0, "cost": 10.0}, {"after_hours_off": 2, "cost": 40.0}])
+    document = job([50.0] * 4, by_hours_off, outages=[outage(G1, 0, 3)])
+    assert planned(running(document)).margin == pytest.approx(10.0)
+
+
 # ramps
 
 
