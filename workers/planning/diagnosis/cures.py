@@ -33,13 +33,12 @@ Cure = tuple[Move, ...]
 
 
 def cures_of(trouble: Trouble, solving: Solving, guesses: Mapping[str, float]) -> Iterator[Cure]:
-    """Give the least changes that cure a part, single ones first; `guesses` are hours by commitment pointer.
+    """Give the least changes that cure a part, single ones first; `guesses` are figures by the pointer of a lever.
 
     Raises CutShort.
     """
-    named = [element for element in trouble.scope.elements if element in frozenset().union(*trouble.conflicts)]
-    levers = sorted(levers_of(trouble.scope, named), key=lambda lever: lever.pointer not in guesses)
     search = _Search(trouble, solving, guesses)
+    levers = search.levers()
     found = False
     for lever in levers:
         if all(lever.covers & conflict for conflict in trouble.conflicts) and (cure := search.least((lever,))):
@@ -55,6 +54,20 @@ class _Search:
         self._solving = solving
         self._guesses = guesses
         self._tried: dict[frozenset[tuple[Lever, int]], bool] = {}
+
+    def levers(self) -> list[Lever]:
+        """List the levers of all that is named, and make sure that all of them together would do.
+
+        A conflict that they leave is taken note of, with its levers; none where a conflict has no lever at all.
+        """
+        while True:
+            named = frozenset().union(*self._trouble.conflicts)
+            levers = levers_of(self._trouble.scope, [e for e in self._trouble.scope.elements if e in named])
+            eased = frozenset[Element]().union(*(lever.covers for lever in levers))
+            if any(eased.isdisjoint(conflict) for conflict in self._trouble.conflicts):
+                return []
+            if self._would_do(eased):
+                return sorted(levers, key=lambda lever: lever.pointer not in self._guesses)
 
     def least(self, levers: tuple[Lever, ...]) -> Cure | None:
         """Find the least steps of some levers that cure together, one after the other; None where all do not."""
@@ -116,10 +129,10 @@ class _Search:
         return least_step(cures, lever.steps, self._guess(lever))
 
     def _guess(self, lever: Lever) -> int | None:
-        hours = self._guesses.get(lever.pointer)
-        if hours is None:
+        figure = self._guesses.get(lever.pointer)
+        if figure is None:
             return None
-        return next((step for step in range(lever.steps + 1) if float(lever.shown(step)) <= hours + 1e-9), None)
+        return least_step(lambda step: float(lever.shown(step)) <= figure + 1e-9, lever.steps, None)
 
 
 def least_step(cures: Callable[[int], bool], last: int, guess: int | None) -> int:

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 
 from schemas.diagnosis import Repair
 from workers.planning.diagnosis.again import Audited, Planner
-from workers.planning.diagnosis.attainable import Reached, reached
+from workers.planning.diagnosis.attainable import Reached, is_ceiling, reached
 from workers.planning.diagnosis.cures import Cure, cures_of
 from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.localise import Trouble, find_conflicts, search_further, troubles_of
@@ -16,8 +16,9 @@ from workers.planning.diagnosis.nearest import Nearest, key_of, nearest
 from workers.planning.diagnosis.repairs import repairs_of
 from workers.planning.diagnosis.scope import Question
 from workers.planning.parts import independent_parts
+from workers.planning.rows import HoursRow
 
-SHARES = {"conflicts": 0.4, "attainable": 0.3, "cures": 0.4, "repairs": 0.5, "nearest": 0.7, "more conflicts": 0.9}
+SHARES = {"conflicts": 0.4, "more conflicts": 0.25, "attainable": 0.3, "cures": 0.4, "repairs": 0.5, "nearest": 0.9}
 """Share of the time that is left which each step may take, in this order."""
 
 MOST_CONFLICTS = 50
@@ -56,11 +57,11 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
             found.cut_off.append(name)
 
     step("conflicts", 0.1, lambda s: _find_conflicts(found, proven, s))
+    step("more conflicts", 0.2, lambda s: _search_further(found, s))
     step("attainable", 0.3, lambda s: _find_reached(found, s))
     step("cures", 0.4, lambda s: _find_cures(found, s))
     step("repairs", 0.5, lambda s: _find_repairs(found, planner, s))
     step("nearest", 0.7, lambda s: _find_nearest(found, planner, s))
-    step("more conflicts", 0.9, lambda s: _search_further(found, s))
     return found
 
 
@@ -92,11 +93,11 @@ def _find_repairs(found: Findings, planner: Planner, solving: Solving) -> None:
 
 
 def _guesses(found: Findings) -> dict[str, float]:
-    """Give for each commitment the fewest hours that any of its rows can have."""
+    """Give for each commitment the fewest hours, or the least energy, that any of its rows can have."""
     guesses: dict[str, float] = {}
     for one in found.reached:
-        if not one.left_out:
-            place = f"{one.row.pointer}/hours"
+        if not is_ceiling(one.row):
+            place = f"{one.row.pointer}/{'hours' if isinstance(one.row, HoursRow) else 'energy_mwh'}"
             guesses[place] = min(one.attainable, guesses.get(place, one.attainable))
     return guesses
 

@@ -1,11 +1,12 @@
 """The sentence of a diagnosis: what is asked, what can be had, and what stands in the way, with numbers and units."""
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 
-from workers.planning.diagnosis.attainable import Reached, unit_of
+from workers.planning.diagnosis.attainable import Reached, is_ceiling, unit_of
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.localise import Conflict, Trouble
 from workers.planning.diagnosis.scope import row_of
+from workers.planning.flows import FlexibleLoadUnit
 from workers.planning.instance import Instance
 from workers.planning.rows import CommitmentRow, HoursRow
 from workers.planning.screening import screen
@@ -34,9 +35,23 @@ def _sentence(trouble: Trouble, conflict: Conflict, reached: Sequence[Reached]) 
     if findings := screen(alone):
         return " ".join([findings[0].sentence, *had])
     members = [element for element in reversed(trouble.scope.elements) if element in conflict]
-    together = "these cannot hold together" if len(members) > 1 else "it cannot be met"
-    physics = [text for row in alone.rows if (text := _energy(alone, row))]
-    return " ".join([f"{_capital(_listed(members))}: {together}.", *physics, *had])
+    opening = "These cannot hold together" if len(members) > 1 else "This cannot be met"
+    return " ".join([f"{opening}: {_listed(members)}.", *_physics(alone), *had])
+
+
+def _physics(alone: Instance) -> Iterator[str]:
+    """Quote what no schedule can escape, for what is left when a conflict stands alone."""
+    for row in alone.rows:
+        if text := _energy(alone, row):
+            yield text
+    for unit in alone.units:
+        if isinstance(unit, FlexibleLoadUnit):
+            for need in unit.needs:
+                most = float(unit.most_in_mw[list(need.intervals)].sum()) * alone.hours
+                yield (
+                    f"{unit.id} draws nothing or at least {unit.min_draw_mw:g} MW in an interval of {alone.hours:g} h, and "
+                    f"at most {most:.4g} MWh within its need of {need.energy_mwh:g} MWh."
+                )
 
 
 def _energy(instance: Instance, row: CommitmentRow) -> str | None:
@@ -53,18 +68,17 @@ def _energy(instance: Instance, row: CommitmentRow) -> str | None:
 
 
 def _had(conflict: Conflict, reached: Sequence[Reached]) -> list[str]:
-    return [
-        f"At most {one.attainable:g} of the {one.required:g} {unit_of(one.row)} of {one.row.id}{one.row.where} "
-        f"can be had"
-        f"{'' if not one.left_out else ', and that only without ' + _listed(one.left_out)}."
-        for one in reached
-        if row_of(one.row) in conflict and one.attainable < one.required
-    ]
+    """Say how far the rows of a conflict can be met."""
+    return [_figure(one) for one in reached if row_of(one.row) in conflict and one.attainable != one.required]
+
+
+def _figure(one: Reached) -> str:
+    unit, whose = unit_of(one.row), f"{one.row.id}{one.row.where}"
+    without = f", and that only without: {_listed(one.left_out)}" if one.left_out else ""
+    if is_ceiling(one.row):
+        return f"{whose} cannot be kept below {one.attainable:.6g} {unit}, and allows {one.required:g}{without}."
+    return f"At most {one.attainable:.6g} of the {one.required:g} {unit} of {whose} can be had{without}."
 
 
 def _listed(elements: Sequence[Element]) -> str:
     return "; ".join(element.text for element in elements)
-
-
-def _capital(text: str) -> str:
-    return text[:1].upper() + text[1:]
