@@ -49,8 +49,8 @@ def _physics(alone: Instance) -> Iterator[str]:
             for need in unit.needs:
                 most = float(unit.most_in_mw[list(need.intervals)].sum()) * alone.hours
                 yield (
-                    f"{unit.id} draws nothing or at least {unit.min_draw_mw:g} MW in an interval of {alone.hours:g} h, and "
-                    f"at most {most:.4g} MWh within its need of {need.energy_mwh:g} MWh."
+                    f"{unit.id} draws nothing or at least {unit.min_draw_mw:g} MW in an interval of {alone.hours:g} h, "
+                    f"and at most {most:.4g} MWh within its need of {need.energy_mwh:g} MWh."
                 )
 
 
