@@ -40,7 +40,7 @@ def reached(trouble: Trouble, solving: Solving) -> Iterator[Reached]:
             least = least_shortfall(scope, row, left_out, solving)
             required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
             side = 1.0 if is_ceiling(row) else -1.0
-            yield Reached(row, required, required + side * least, tuple(left_out))
+            yield Reached(row, required, max(0.0, required + side * least), tuple(left_out))
 
 
 def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozenset[Element]], bool]) -> list[Element]:

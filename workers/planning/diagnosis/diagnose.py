@@ -105,7 +105,7 @@ def _guesses(found: Findings) -> dict[str, float]:
 def _find_nearest(found: Findings, planner: Planner, solving: Solving) -> None:
     found.nearest = nearest(found.question, {key_of(trouble.part) for trouble in found.troubles}, planner, solving)
     if found.nearest is None:
-        found.no_nearest = "None keeps what cannot be bent: energy needs, stored floors, limits of a day, physics."
+        found.no_nearest = "Outages, needs, floors, limits of a day, run and rest times, ramps and physics leave none."
 
 
 def _search_further(found: Findings, solving: Solving) -> None:

@@ -6,7 +6,7 @@ from workers.planning.diagnosis.attainable import Reached, is_ceiling, unit_of
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.localise import Conflict, Trouble
 from workers.planning.diagnosis.scope import row_of
-from workers.planning.flows import FlexibleLoadUnit
+from workers.planning.flows import FlexibleLoadUnit, Need
 from workers.planning.instance import Instance
 from workers.planning.rows import CommitmentRow, HoursRow
 from workers.planning.screening import screen
@@ -41,17 +41,23 @@ def _sentence(trouble: Trouble, conflict: Conflict, reached: Sequence[Reached]) 
 
 def _physics(alone: Instance) -> Iterator[str]:
     """Quote what no schedule can escape, for what is left when a conflict stands alone."""
-    for row in alone.rows:
-        if text := _energy(alone, row):
-            yield text
+    yield from (text for row in alone.rows if (text := _energy(alone, row)))
     for unit in alone.units:
         if isinstance(unit, FlexibleLoadUnit):
-            for need in unit.needs:
-                most = float(unit.most_in_mw[list(need.intervals)].sum()) * alone.hours
-                yield (
-                    f"{unit.id} draws nothing or at least {unit.min_draw_mw:g} MW in an interval of {alone.hours:g} h, "
-                    f"and at most {most:.4g} MWh within its need of {need.energy_mwh:g} MWh."
-                )
+            yield from (_draw(unit, need, alone.hours) for need in unit.needs)
+    for meter in (*alone.meters, alone.fleet):
+        if meter.lot_mw is not None:
+            yield f"{meter.id} trades in lots of {meter.lot_mw:g} MW."
+        if meter.is_limited and meter.load_mw.any():
+            yield f"Loads at {meter.id} draw {meter.load_mw.min():.4g} to {meter.load_mw.max():.4g} MW."
+
+
+def _draw(unit: FlexibleLoadUnit, need: Need, hours: float) -> str:
+    most = float(unit.most_in_mw[list(need.intervals)].sum()) * hours
+    return (
+        f"{unit.id} draws nothing or at least {unit.min_draw_mw:g} MW in an interval of {hours:g} h, and at most "
+        f"{most:.4g} MWh within its need of {need.energy_mwh:g} MWh."
+    )
 
 
 def _energy(instance: Instance, row: CommitmentRow) -> str | None:
