@@ -167,6 +167,7 @@ class Schedule(Answer):
     verification: Verification
     provenance: Provenance
     commitment_costs: list[CommitmentCost] | None = None
+    cut_off: list[str] = Field(default=[], description="What was asked for and time did not suffice for.")
     cautions: list[str]
 
 

@@ -8,7 +8,7 @@ from collections.abc import Iterator
 from schemas.job import Job
 from schemas.problems import Fault, Unsupported, pointer
 
-UNSUPPORTED_TASKS = {"commitment_costs", "reschedule", "sequence"}
+UNSUPPORTED_TASKS = {"reschedule", "sequence"}
 UNSUPPORTED_METHODS = {"coordinated"}
 NO_STORE = "there is no store behind this command: give the document itself"
 UNSUPPORTED_MEMBERS = {
@@ -16,7 +16,6 @@ UNSUPPORTED_MEMBERS = {
     "window_id": NO_STORE,
     "initial_from_job_id": "there are no earlier jobs behind this command: give `initial`",
     "callback": "nobody is told of the end of a job yet",
-    "explain_commitments": "commitments are not priced yet",
 }
 
 

@@ -61,10 +61,9 @@ def test_a_plain_request_asks_for_nothing_that_is_not_offered() -> None:
             {
                 "/initial_from_job_id",
                 "/callback",
-                "/explain_commitments",
             },
         ),
-        ("commitment_costs", {"/task", "/fleet_id", "/window_id"}),
+        ("commitment_costs", {"/fleet_id", "/window_id"}),
         ("reschedule", {"/task"}),
         ("sequence", {"/task"}),
     ],

@@ -9,15 +9,23 @@ from importlib.metadata import version
 from schemas.assumptions import assumptions
 from schemas.cautions import CAUTIONS
 from schemas.diagnosis import Conflict, Diagnosis, Member
-from schemas.job import CheckJob, Job, ScheduleJob
+from schemas.job import CheckJob, CommitmentCostsJob, Job, ScheduleJob
 from schemas.reading import canonical
 from schemas.schedule import Outcome, Provenance, Schedule, Undecided
 from workers.planning.audit import Replay
 
-PlannedJob = ScheduleJob | CheckJob
+PlannedJob = ScheduleJob | CommitmentCostsJob | CheckJob
 """The tasks that are planned so far; all on one window."""
 
 LIBRARIES = ("hourwright", "highspy", "ortools", "pyomo")
+
+
+def as_schedule_job(job: ScheduleJob | CommitmentCostsJob) -> ScheduleJob:
+    """Take what a job asks to be scheduled; everything was validated as a part of the job."""
+    if isinstance(job, ScheduleJob):
+        return job
+    members = {name: getattr(job, name) for name in job.model_fields_set & ScheduleJob.model_fields.keys() - {"task"}}
+    return ScheduleJob.model_construct(**members)
 
 
 @dataclass(frozen=True)
@@ -34,7 +42,7 @@ class Effort:
 def provenance(job: Job, effort: Effort) -> Provenance:
     """Say from which request, by which versions and with what effort an answer was made."""
     return Provenance(
-        request_sha256=hashlib.sha256(canonical(job)).hexdigest(),
+        request_sha256=fingerprint(job),
         versions=dict(_versions()),
         seed=job.seed,
         threads=effort.threads,
@@ -42,6 +50,11 @@ def provenance(job: Job, effort: Effort) -> Provenance:
         solver_seconds=round(effort.solver_seconds, 6),
         build_seconds=round(effort.build_seconds, 6),
     )
+
+
+def fingerprint(job: Job) -> str:
+    """Give the SHA-256 of a request's canonical form."""
+    return hashlib.sha256(canonical(job)).hexdigest()
 
 
 @cache

@@ -6,12 +6,12 @@ from math import isfinite
 import numpy as np
 
 from schemas.diagnosis import Diagnosis, NearestSchedule
-from schemas.job import CheckJob, Job, ScheduleJob
-from schemas.schedule import Schedule, Undecided, Violation
+from schemas.job import CheckJob, CommitmentCostsJob, Job, ScheduleJob
+from schemas.schedule import Schedule, Undecided
 from schemas.support import require_supported
 from workers.planning import answer
 from workers.planning.assembly import UnitPlan
-from workers.planning.audit import Decision, Replay, replay
+from workers.planning.audit import Decision, replay
 from workers.planning.diagnosis.diagnose import Findings, diagnose
 from workers.planning.diagnosis.feasibility import Solving
 from workers.planning.diagnosis.report import diagnosis_of, nearest_schedule
@@ -21,21 +21,13 @@ from workers.planning.extraction import decision_of
 from workers.planning.instance import Instance, instance_of
 from workers.planning.limits import Limits, Unwatched, Watch
 from workers.planning.methods import Choice, Found, choose, solve
+from workers.planning.pricing.report import limits_to_search, prices_of, with_prices
+from workers.planning.proof import Audited, PlanningError, audited, decisions_of
 from workers.planning.screening import screen
 
+__all__ = ["Answer", "PlanningError", "plan"]
+
 Answer = Schedule | Diagnosis | Undecided
-
-ROUND_OFF = 1e-6
-"""Margins may differ by this share through round-off and the audit's tolerance; by more, a fault is ours."""
-
-
-class PlanningError(Exception):
-    """Our own fault: a schedule that the audit refuses, or a margin above its bound; carries the evidence."""
-
-    def __init__(self, what: str, violations: list[Violation]) -> None:
-        super().__init__(what, violations)
-        self.what = what
-        self.violations = violations
 
 
 def plan(job: Job, limits: Limits, watch: Watch | None = None, *, earlier: Schedule | None = None) -> Answer:
@@ -47,76 +39,39 @@ def plan(job: Job, limits: Limits, watch: Watch | None = None, *, earlier: Sched
     require_supported(job)
     if isinstance(job, CheckJob):
         return _checked(job, limits)
-    if not isinstance(job, ScheduleJob):
+    if not isinstance(job, ScheduleJob | CommitmentCostsJob):
         raise ValueError(f"the task {job.task} passed as supported, but nothing here does it")
     watch = watch or Unwatched()
     watch.progress("indexing", 0.0)
-    instance = instance_of(job)
+    asked = answer.as_schedule_job(job)
+    instance = instance_of(asked)
+    choice = choose(instance, asked.method)
     if screen(instance):
-        return _diagnosed(job, instance, [], limits, watch)
-    choice = choose(instance, job.method)
+        prices = prices_of(job, choice, None, limits, watch)
+        return with_prices(_diagnosed(asked, instance, [], limits, watch), prices)
     watch.progress("solving", 0.0)
     start = None if earlier is None else earlier_of(instance, earlier.assets)
-    found = solve(choice, limits, watch, seed=job.seed, earlier=start)
+    found = solve(choice, limits_to_search(job, limits), watch, seed=job.seed, earlier=start)
     if found.infeasible_parts:
-        return _diagnosed(job, instance, found.infeasible_parts, limits, watch)
+        prices = prices_of(job, choice, found, limits, watch)
+        return with_prices(_diagnosed(asked, instance, found.infeasible_parts, limits, watch), prices)
     if not found.has_schedule:
         return _undecided(job, found, limits)
     watch.progress("auditing", 1.0)
-    return _audited(job, choice, found, limits, watch)
+    proof = audited(asked, found, limits, watch)
+    return with_prices(_schedule(job, proof, limits), prices_of(job, choice, proof, limits, watch))
 
 
-def _audited(job: ScheduleJob, choice: Choice, found: Found, limits: Limits, watch: Watch) -> Schedule:
-    """Let the audit judge; what it refuses is solved once more with every mode apart, and never returned."""
-    replayed = replay(job, _decisions(found))
-    if replayed.verification.violations:
-        again = solve(choice, limits, watch, seed=job.seed, careful=True)
-        found = again if again.has_schedule else found
-        replayed = replay(job, _decisions(found))
-    if replayed.verification.violations:
-        raise PlanningError("the audit refuses every schedule found", replayed.verification.violations)
-    _require_margin(replayed, found)
-    bound = _bound_above(replayed, found.bound)
+def _schedule(job: ScheduleJob | CommitmentCostsJob, proof: Audited, limits: Limits) -> Schedule:
+    """Write down a schedule that the audit passed, and whether its bound lies within the gap asked for."""
+    replayed, bound = proof.replayed, proof.bound
     gap = None if bound is None else bound - replayed.margin
     is_optimal = gap is not None and (
         gap <= job.absolute_gap or answer.relative_gap(replayed, replayed.margin + gap) <= job.relative_gap * (1 + 1e-6)
     )
     return answer.schedule(
-        job, replayed, "optimal" if is_optimal else "feasible", bound, _effort(choice, found, limits)
+        job, replayed, "optimal" if is_optimal else "feasible", bound, _effort(proof.found.choice, proof.found, limits)
     )
-
-
-def _decisions(found: Found) -> dict[str, Decision]:
-    decisions = {}
-    for part, solution in zip(found.choice.parts, found.solutions, strict=True):
-        for unit, planned in zip(part.units, solution.plans or (), strict=True):
-            decisions[unit.id] = decision_of(part, unit, planned)
-    return decisions
-
-
-def _slack(replayed: Replay) -> float:
-    """Give how far round-off and the audit's tolerance may move a margin, in money."""
-    turnover = abs(replayed.totals.sales) + abs(replayed.totals.purchases)
-    return ROUND_OFF * max(1.0, abs(replayed.margin), turnover)
-
-
-def _require_margin(replayed: Replay, found: Found) -> None:
-    """Refuse a schedule that earns less than the model said: the model's money is wrong, and so is its bound.
-
-    More than that is possible: within its gap a model may pay for a shortfall or a peak that is not there.
-    """
-    claimed = sum(solution.margin or 0.0 for solution in found.solutions)
-    if replayed.margin < claimed - _slack(replayed):
-        raise PlanningError(f"the schedule earns {replayed.margin}, the model said {claimed}", [])
-
-
-def _bound_above(replayed: Replay, bound: float) -> float | None:
-    """Give the bound, lifted over the margin where only round-off separates them."""
-    if not isfinite(bound):
-        return None
-    if replayed.margin > bound + _slack(replayed):
-        raise PlanningError(f"the margin {replayed.margin} lies above its bound {bound}", [])
-    return max(bound, replayed.margin)
 
 
 def _effort(choice: Choice, found: Found, limits: Limits) -> answer.Effort:
@@ -137,11 +92,11 @@ def _diagnosed(
     watch.more_time(again.seconds)
     solving = Solving(again, watch, job.seed, again.clock() + again.left_to_solve())
 
-    def audited(changed: ScheduleJob, choice: Choice, found: Found) -> Schedule:
-        return _audited(changed, choice, found, again, watch)
+    def planned(changed: ScheduleJob, _: Choice, found: Found) -> Schedule:
+        return _schedule(changed, audited(changed, found, again, watch), again)
 
     proven = [tuple(unit.id for unit in part.units) for part in infeasible]
-    found = diagnose(Question(job, instance), proven, audited, solving)
+    found = diagnose(Question(job, instance), proven, planned, solving)
     nearest, no_nearest = _nearest(job, found, again)
     return diagnosis_of(found, nearest, no_nearest)
 
@@ -151,14 +106,14 @@ def _nearest(job: ScheduleJob, found: Findings, limits: Limits) -> tuple[Nearest
     near = found.nearest
     if near is None:
         return None, found.no_nearest or "Time did not suffice to find it."
-    replayed = replay(near.job, _decisions(near.found))
+    replayed = replay(near.job, decisions_of(near.found))
     if replayed.verification.violations:
         raise PlanningError("the audit refuses the nearest schedule", replayed.verification.violations)
     effort = _effort(near.choice, near.found, limits)
     return nearest_schedule(answer.schedule(job, replayed, "infeasible", None, effort), near.missing), None
 
 
-def _undecided(job: ScheduleJob, found: Found, limits: Limits) -> Undecided:
+def _undecided(job: ScheduleJob | CommitmentCostsJob, found: Found, limits: Limits) -> Undecided:
     """Hand over what is proven, and the attempt in hand: planned where a plan was found, idle elsewhere."""
     decisions = {}
     for part, solution in zip(found.choice.parts, found.solutions, strict=True):

@@ -73,8 +73,8 @@ def test_coupled_sites_are_planned_part_by_part() -> None:
 
 def test_what_is_not_planned_yet_is_refused_by_name() -> None:
     with pytest.raises(Unsupported) as refusal:
-        answer(job([10.0], store(), method="coordinated", explain_commitments=True))
-    assert {fault.pointer for fault in refusal.value.faults} == {"/method", "/explain_commitments"}
+        answer(job([10.0], store(), method="coordinated", initial_from_job_id="yesterday"))
+    assert {fault.pointer for fault in refusal.value.faults} == {"/method", "/initial_from_job_id"}
 
 
 def test_no_time_left_before_it_is_needed_is_undecided_with_an_attempt_marked_as_such() -> None:
