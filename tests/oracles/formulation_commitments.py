@@ -46,15 +46,13 @@ def add_commitments(
         }.get(commitment["kind"])
         if add is None:
             raise ValueError(f"this oracle does not know {commitment['kind']}")
-        for (subject, day), row in _rows(job, commitment, powers, clock):
-            if (number, subject or None, day) not in without_rows:
+        for row in _rows(job, commitment, powers, clock):
+            if (number, row.asset, row.day) not in without_rows:
                 add(program, row)
 
 
-def _rows(
-    job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock
-) -> list[tuple[tuple[str, str | None], Row]]:
-    """Return the rows of a commitment by subject and day, what was counted before credited to each subject's first."""
+def _rows(job: Job, commitment: dict[str, Any], powers: Powers, clock: Clock) -> list[Row]:
+    """Return the rows of a commitment, what was counted before credited to the first of each subject."""
     counted = given(given(given(job, "counted_before"), "commitments"), commitment["id"], 0.0)
     excused = {t for span in given(commitment, "excused", []) for t in clock.inside(span.get("from"), span.get("to"))}
     sign = -1.0 if given(commitment, "direction", "discharge") == "charge" else 1.0
@@ -66,17 +64,20 @@ def _rows(
             product = commitment["product"]
             reserve = [total(powers[a].reserve.of(product, t) for a in subject.members) for t in range(len(clock))]
         for span in spans(commitment, clock):
-            row = Row(
-                commitment=commitment,
-                clock=clock,
-                intervals=span.intervals,
-                power=[power * sign for power in subject.power],
-                reserve=reserve,
-                rated_mw=_rated_mw(job, commitment, subject.members),
-                excused=excused,
-                credit=credit,
+            rows.append(
+                Row(
+                    commitment=commitment,
+                    asset=subject.key or None,
+                    day=None if span.day is None else span.day.isoformat(),
+                    clock=clock,
+                    intervals=span.intervals,
+                    power=[power * sign for power in subject.power],
+                    reserve=reserve,
+                    rated_mw=_rated_mw(job, commitment, subject.members),
+                    excused=excused,
+                    credit=credit,
+                )
             )
-            rows.append(((subject.key, None if span.day is None else span.day.isoformat()), row))
             credit = 0.0
     return rows
 

@@ -17,10 +17,13 @@ class Row:
     """Hold what a row needs.
 
     `power` and `reserve` cover the whole window, MW; `power` is positive in the commitment's direction, `reserve` is
-    what the subject holds of the commitment's product. `credit` is what was counted before, in the commitment's unit.
+    what the subject holds of the commitment's product. `asset` and `day` are None where the row is not about one alone.
+    `credit` is what was counted before, in the commitment's unit.
     """
 
     commitment: dict[str, Any]
+    asset: str | None
+    day: str | None
     clock: Clock
     intervals: list[int]
     power: list[Affine]
