@@ -242,7 +242,8 @@ def _climb(pricing: _Pricing, step_hours: float) -> float | None:
 
 def _entries(known: dict[float, Audited], step_hours: float, attained: float | None) -> list[CommitmentCost]:
     """List the steps that are known, and the most attainable; none without 0 hours, which costs are measured from."""
-    listed = sorted(hours for hours in known if _is_step(hours, step_hours) or hours == attained)
+    steps = (hours for hours in known if _is_step(hours, step_hours) or hours == attained)
+    listed = sorted(hours for hours in steps if attained is None or hours <= attained + SAME_HOURS)
     if not listed or listed[0] > SAME_HOURS:
         return []
     margins = [known[hours].replayed.margin for hours in listed]
