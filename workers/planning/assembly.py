@@ -201,7 +201,11 @@ def mixed_modes(columns: FleetColumns, values: Floats) -> list[Booleans]:
 
 def unmixed(assembled: Assembled, values: Floats, mixed: list[Booleans]) -> highs.Matrix:
     """Fix every discrete choice, and every mode to the direction in which its stored energy moves."""
-    matrix = highs.fixed(assembled.matrix, values)
+    return with_closed(assembled, highs.fixed(assembled.matrix, values), values, mixed)
+
+
+def with_closed(assembled: Assembled, matrix: highs.Matrix, values: Floats, mixed: list[Booleans]) -> highs.Matrix:
+    """Close, where modes are mixed, the direction against which the stored energy moves."""
     lower, upper = matrix.lower.copy(), matrix.upper.copy()
     for store, modes, where in zip(assembled.columns.stores, assembled.modes, mixed, strict=True):
         charge, discharge = values[store.charge], values[store.discharge]

@@ -27,6 +27,7 @@ from workers.planning.assembly import (
     tangents_needed,
     unmixed,
     where_mixing_may_pay,
+    with_closed,
     with_tangents,
 )
 from workers.planning.earlier import as_it_was, is_of_shape, with_its_choices
@@ -184,21 +185,16 @@ class _Search:
             self._take(assembled, polished)
 
     def keep_earlier(self, assembled: Assembled, ending: Ending) -> None:
-        """Keep the best powers for the choices of an earlier schedule, which is among them.
+        """Keep the best powers for the choices of an earlier schedule, and that schedule where none are better.
 
-        Directions stay open where the model has no binary for them, and are closed to what they were where that mixes.
+        Directions stay open where the model has no binary for them.
         """
-        mixed = [np.zeros(self.instance.intervals, dtype=bool) for _ in assembled.columns.stores]
-        for _ in range(ROUNDS_BEFORE_WHOLE_STORES):
-            polished = self._polish(assembled, ending, mixed)
-            if polished is None or polished.values is None:
-                return
-            again = mixed_modes(assembled.columns, polished.values)
-            if not any(where.any() for where in again):
-                self._take(assembled, polished)
-                return
-            mixed = [before | where for before, where in zip(mixed, again, strict=True)]
-        self.keep(assembled, ending, [np.ones_like(where) for where in mixed])
+        mixed = mixed_modes(assembled.columns, ending.values) if ending.values is not None else []
+        if not any(where.any() for where in mixed):
+            self._take(assembled, ending)
+        polished = self._polish(assembled, ending, mixed)
+        if polished is not None:
+            self._take(assembled, polished)
 
     def _take(self, assembled: Assembled, polished: Ending) -> None:
         if polished.values is None or polished.margin is None:
@@ -211,7 +207,10 @@ class _Search:
         self.tangents += tangents_at(assembled.columns, polished.values)
 
     def _polish(self, assembled: Assembled, ending: Ending, mixed: list[Booleans]) -> Ending | None:
-        """Give the best point of the LP that is left when everything discrete is fixed; None where there is none."""
+        """Give the best point of the LP that is left when everything discrete is fixed; None where there is none.
+
+        Where it mixes modes anew, one direction is closed there too: what is given mixes none.
+        """
         if ending.values is None:
             return None
         matrix, best = unmixed(assembled, ending.values, mixed), None
@@ -219,6 +218,10 @@ class _Search:
             found = self._run(matrix, self._left_to_hand_over(), Unwatched())
             if found.values is None or found.margin is None:
                 return best
+            again = mixed_modes(assembled.columns, found.values)
+            if any(where.any() for where in again):
+                matrix = with_closed(assembled, matrix, found.values, again)
+                continue
             best = found
             rows = tangents_needed(assembled.columns, found.values, self.instance.hours)
             if self._missing_cost(assembled, found) <= EXACT_ENOUGH * max(1.0, abs(found.margin)) or not rows:

@@ -79,6 +79,8 @@ class _Pricing:
         """
         if any(abs(hours - done) <= SAME_HOURS for done in self.known):
             return True
+        if self._is_over():
+            raise _OutOfTime
         variant = self._asking(hours)
         if (served := self._served_already(variant)) is not None:
             self.known[hours] = served
@@ -98,9 +100,7 @@ class _Pricing:
         """Solve the parts with rows of ours, and put them among the others."""
         if not moved:
             return Found(self.choice, tuple(self.solutions))
-        left = self.limits.left_to_solve()
-        if left <= 0 or self.watch.is_stop_asked():
-            raise _OutOfTime
+        left = max(self.limits.left_to_solve(), 0.0)
         seconds = min(left, LONGEST_SHARE * left / max(waiting, 1))
         limits = replace(self.limits, seconds=seconds / (1 - AUDIT_SHARE), started=self.limits.clock())
         choice = Choice(self.choice.method, tuple(moved.values()), "")
@@ -131,6 +131,9 @@ class _Pricing:
             for k, solution in zip(left_out, found.solutions, strict=True):
                 self.solutions[k] = solution
         return True
+
+    def _is_over(self) -> bool:
+        return self.limits.left_to_solve() <= 0 or self.watch.is_stop_asked()
 
     def _is_touched(self, part: Instance) -> bool:
         return any(self._is_ours(row) for row in part.rows)
