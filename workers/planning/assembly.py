@@ -201,19 +201,28 @@ def mixed_modes(columns: FleetColumns, values: Floats) -> list[Booleans]:
 
 def unmixed(assembled: Assembled, values: Floats, mixed: list[Booleans]) -> highs.Matrix:
     """Fix every discrete choice, and every mode to the direction in which its stored energy moves."""
-    return with_closed(assembled, highs.fixed(assembled.matrix, values), values, mixed)
+    matrix = highs.fixed(assembled.matrix, values)
+    lower, upper = matrix.lower.copy(), matrix.upper.copy()
+    for store, modes in zip(assembled.columns.stores, assembled.modes, strict=True):
+        discharges = ~_fills(store, values)[modes.intervals]
+        lower[modes.columns] = upper[modes.columns] = discharges.astype(float)
+    return with_closed(assembled, replace(matrix, lower=lower, upper=upper), values, mixed)
 
 
 def with_closed(assembled: Assembled, matrix: highs.Matrix, values: Floats, mixed: list[Booleans]) -> highs.Matrix:
     """Close, where modes are mixed, the direction against which the stored energy moves."""
-    lower, upper = matrix.lower.copy(), matrix.upper.copy()
-    for store, modes, where in zip(assembled.columns.stores, assembled.modes, mixed, strict=True):
-        charge, discharge = values[store.charge], values[store.discharge]
-        fills = charge * store.unit.charge_efficiency > discharge / store.unit.discharge_efficiency
+    upper = matrix.upper.copy()
+    for store, where in zip(assembled.columns.stores, mixed, strict=True):
+        fills = _fills(store, values)
         upper[store.discharge[where & fills]] = 0.0
         upper[store.charge[where & ~fills]] = 0.0
-        lower[modes.columns] = upper[modes.columns] = (~fills[modes.intervals]).astype(float)
-    return replace(matrix, lower=lower, upper=upper)
+    return replace(matrix, upper=upper)
+
+
+def _fills(store: StoreColumns, values: Floats) -> Booleans:
+    charged = values[store.charge] * store.unit.charge_efficiency
+    fills: Booleans = charged > values[store.discharge] / store.unit.discharge_efficiency
+    return fills
 
 
 def tangents_needed(columns: FleetColumns, values: Floats, hours: float) -> list[Tangents]:

@@ -80,6 +80,13 @@ def test_planner_and_oracle_agree_on_a_tenth_of_the_uncoupled_fleets() -> None:
     assert _compare(range(UNCOUPLED // 10), coupled=False)["optimal"] > 0
 
 
+@pytest.mark.parametrize("path", sorted(STORED.glob("*.json")), ids=lambda path: path.stem)
+def test_planner_and_oracle_agree_on_what_once_failed(path: Path) -> None:
+    document = json.loads(path.read_text())
+    wrong = _disagreement(answer(document), solve(document, gap=GAP, time_limit=120))
+    assert wrong is None, wrong
+
+
 def test_planner_and_oracle_agree_on_a_fleet_of_the_day() -> None:
     seed = date.today().toordinal()  # noqa: DTZ011 - any number that changes daily will do
     print(f"seed of the day: {seed}")
