@@ -16,7 +16,7 @@ from workers.planning.store import whole_intervals
 GRAIN_MWH = 0.01
 """Energies and reserve are told in steps of 0.01 MWh, rounded to the safe side."""
 
-CLOSE = 0.1
+CLOSE = 0.02
 """All power that could flow costs this share of a grain, so that it never outweighs one."""
 
 
@@ -72,31 +72,37 @@ def least_shortfall(scope: Scope, row: CommitmentRow, left_out: Iterable[Element
 
 
 def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> float:
-    """Price one row alone, and find the schedule that misses least of it; to the grain of its unit."""
+    """Price one row alone, and find the schedule that misses least of it, in its unit; raises CutShort.
+
+    Power that flows is worth or costs next to nothing, together less than `CLOSE` of a grain either way.
+    """
     hours, grain = instance.hours, grain_of(row, instance.hours)
     bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
     rows = tuple(replace(other, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
     found = solving.solve(replace(bare, rows=rows, absolute_gap=grain * CLOSE, relative_gap=1e-9))
     if found.margin is None:
         raise solving.cut_short()
-    least, most = max(0.0, -found.bound - CLOSE * grain), max(0.0, -found.margin)
+    missed, proven = -found.margin, -found.bound
     if isinstance(row, HoursRow):
-        due = whole_intervals(row.due_hours, hours)
-        had = _whole(least, most, lambda missed: (row.due_hours - missed) / hours, due, solving)
+        had = _most_intervals(row, missed, hours)
+        if had < _most_intervals(row, proven - CLOSE * grain, hours):
+            raise solving.cut_short()
         return max(0.0, row.due_hours - hours * had)
     if isinstance(row, CeilingRow):
-        return max(0.0, hours * floor((row.allowed_hours + most) / hours + 1e-6) - row.allowed_hours)
-    if most - least > grain:
+        if missed <= 2 * CLOSE * grain:
+            return 0.0
+        return max(0.0, hours * floor((row.allowed_hours + missed) / hours + 0.5) - row.allowed_hours)
+    if missed - proven > grain:
         raise solving.cut_short()
-    return ceil(most / grain - 0.5 - CLOSE) * grain
+    return max(0, ceil(missed / grain - 1.5 * CLOSE)) * grain
 
 
-def _whole(least: float, most: float, intervals: Callable[[float], float], due: int, solving: Solving) -> int:
-    """Give the number of intervals that is both reached and proven to be the most."""
-    reached_, proven = ceil(intervals(most) - 1e-6), floor(intervals(least) + 2 * CLOSE)
-    if reached_ < proven:
-        raise solving.cut_short()
-    return min(reached_, due)
+def _most_intervals(row: HoursRow, missed_hours: float, hours: float) -> int:
+    """Give how many intervals count when so many hours are missing, but for what flowing power adds or takes."""
+    due = whole_intervals(row.due_hours, hours)
+    if missed_hours <= 2 * CLOSE * hours:
+        return due
+    return max(0, min(due, floor((row.due_hours - missed_hours) / hours + 0.5)))
 
 
 def grain_of(row: CommitmentRow, hours: float) -> float:

@@ -71,11 +71,13 @@ def _smaller(question: Question, part: Instance) -> Iterator[Scope]:
     """Cut a part into its assets, then its sites, where these are smaller than it."""
     if len(part.units) < 2:
         return
-    yield from (scope_of_asset(question, unit.id) for unit in part.units)
+    yield from (scope_of_asset(question, part, unit.id) for unit in part.units)
     if len(part.meters) > 1 and question.job.fleet is not None:
         sites = {site.id for site in question.job.fleet.sites}
         yield from (
-            scope_of_site(question, meter.id) for meter in part.meters if meter.id in sites and len(meter.units) > 1
+            scope_of_site(question, part, meter.id)
+            for meter in part.meters
+            if meter.id in sites and len(meter.units) > 1
         )
 
 

@@ -5,7 +5,7 @@ a connection is exceeded only where nothing else helps. What is then missing is 
 for money as ever. The audit judges it by the request relaxed by what is listed as missing.
 """
 
-from collections.abc import Callable, Collection, Iterator, Sequence
+from collections.abc import Callable, Collection, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 
@@ -81,7 +81,7 @@ def nearest(
             raise solving.cut_short()
         parts.append(part)
         solutions.append(solution)
-        for shortfall, relax in _missing(original, solution.plans):
+        for shortfall, relax in _missing(question, original, solution.plans):
             missing.append(shortfall)
             job = relax(job)
     choice = choice_of(tuple(parts))
@@ -135,7 +135,7 @@ def _lowered_unit(unit: Unit, plan: UnitPlan, hours: float) -> Unit:
 Relaxing = tuple[Shortfall, Callable[[ScheduleJob], ScheduleJob]]
 
 
-def _missing(part: Instance, plans: Sequence[UnitPlan]) -> Iterator[Relaxing]:
+def _missing(question: Question, part: Instance, plans: Sequence[UnitPlan]) -> Iterator[Relaxing]:
     """List what a schedule misses of a part, each with the change of the request that asks no more than is there."""
     for row in part.rows:
         if row.price is None:
@@ -144,7 +144,8 @@ def _missing(part: Instance, plans: Sequence[UnitPlan]) -> Iterator[Relaxing]:
         if isinstance(unit, Store):
             yield from _missing_of_target(unit, final_energy(unit, plan, part.hours))
     for meter in (*part.meters, part.fleet):
-        yield from _beyond_limits(meter, raised(meter, plans, part))
+        places = {element.name: element.pointer for element in question.of_meters.get(meter.id, ())}
+        yield from _beyond_limits(meter, raised(meter, plans, part), places)
 
 
 def _missing_of_row(row: CommitmentRow, less: Lowered) -> Iterator[Relaxing]:
@@ -166,10 +167,10 @@ def _missing_of_target(store: Store, reached: float) -> Iterator[Relaxing]:
         yield shortfall, partial(with_target, asset=store.id, final_mwh=max(reached - WORTH_NAMING, 0.0))
 
 
-def _beyond_limits(meter: Meter, higher: Raised) -> Iterator[Relaxing]:
+def _beyond_limits(meter: Meter, higher: Raised, places: Mapping[str, str]) -> Iterator[Relaxing]:
     for side, amount in higher.exceeded.items():
         text = f"{SIDES[side]} of {meter.id} exceeded by up to {amount:.4g} MW"
-        shortfall = Shortfall(pointer=f"/limits/{meter.id}/{side}", text=text, amount=round(amount, 6), unit="MW")
+        shortfall = Shortfall(pointer=places[side], text=text, amount=round(amount, 6), unit="MW")
         limit_mw = [float(value) if np.isfinite(value) else LARGEST for value in getattr(higher.meter, side)]
         yield shortfall, partial(with_limit, meter=meter.id, side=side, limit_mw=limit_mw)
 

@@ -41,16 +41,24 @@ def repairs_of(
 
 
 def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Move]]:
-    """Join one cure of every part: the first of each, then each further one of a part with the first of the others."""
-    first = [of_part[0] for of_part in cures]
-    yield _joined(first)
-    count = 1
-    for number, of_part in enumerate(cures):
-        for cure in of_part[1:]:
-            yield _joined([*first[:number], cure, *first[number + 1 :]])
-            count += 1
-            if count == MOST_REPAIRS:
-                return
+    """Join one cure of every part: the first of each, then each further one of a part with those like it of the others.
+
+    A commitment may bind assets of several parts: it is not eased by its hours in one and its threshold in another.
+    """
+    seen: set[frozenset[tuple[str, str, int]]] = set()
+    for wanted in [cures[0][0], *(cure for of_part in cures for cure in of_part[1:])]:
+        chosen = [next((cure for cure in of_part if _places(cure) == _places(wanted)), of_part[0]) for of_part in cures]
+        moves = _joined(chosen)
+        key = frozenset((move.lever.pointer, move.lever.unit, move.step) for move in moves)
+        if key not in seen:
+            seen.add(key)
+            yield moves
+        if len(seen) == MOST_REPAIRS:
+            return
+
+
+def _places(cure: Cure) -> frozenset[tuple[str, str]]:
+    return frozenset((move.lever.pointer, move.lever.unit) for move in cure)
 
 
 def _joined(cures: Sequence[Cure]) -> list[Move]:

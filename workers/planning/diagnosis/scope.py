@@ -4,7 +4,7 @@ A scope is a job of its own, cut out of the request; elements keep the pointers 
 looked at alone has no site; a site looked at alone has no fleet above it.
 """
 
-from collections.abc import Collection, Iterable, Iterator
+from collections.abc import Collection, Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
@@ -194,28 +194,28 @@ def scope_of_part(question: Question, part: Instance) -> Scope:
         limited |= {whom.site} if whom.site else set()
     sites = {site.id for site in fleet.sites if site.id in limited}
     assets |= {asset.id for asset in fleet.assets if asset.site in sites}
-    return _cut(question, assets, sites, has_fleet=False)
+    return _cut(question, part, assets, sites)
 
 
-def scope_of_asset(question: Question, asset: str) -> Scope:
-    """Cut out one asset alone: no site, no fleet, and of the commitments what is asked of it alone."""
-    return _cut(question, {asset}, set(), has_fleet=False)
+def scope_of_asset(question: Question, part: Instance, asset: str) -> Scope:
+    """Cut out one asset of a part alone: no site, no fleet, and of the commitments what is asked of it alone."""
+    return _cut(question, part, {asset}, set())
 
 
-def scope_of_site(question: Question, site: str) -> Scope:
-    """Cut out one site with all on it, and no fleet above."""
+def scope_of_site(question: Question, part: Instance, site: str) -> Scope:
+    """Cut out one site of a part with all on it, and no fleet above."""
     members = {asset.id for asset in _fleet_of(question.job).assets if asset.site == site}
-    return _cut(question, members, {site}, has_fleet=False)
+    return _cut(question, part, members, {site})
 
 
-def _cut(question: Question, assets: set[str], sites: set[str], *, has_fleet: bool) -> Scope:
+def _cut(question: Question, part: Instance, assets: set[str], sites: set[str]) -> Scope:
     job, fleet = question.job, _fleet_of(question.job)
     kept = [
         asset if asset.site in sites else asset.model_copy(update={"site": None})
         for asset in fleet.assets
         if asset.id in assets
     ]
-    commitments = dict(_commitments(job.commitments, assets, sites))
+    commitments = dict(_commitments(job.commitments, part.rows, assets, sites))
     outages = [number for number, outage in enumerate(job.outages) if outage.asset in assets]
     by_asset = ("initial", "targets", "forecasts", "energy_needs")
     cut = job.model_copy(
@@ -239,17 +239,21 @@ def _cut(question: Question, assets: set[str], sites: set[str], *, has_fleet: bo
             },
         }
     )
-    return Scope(question, cut, tuple(commitments), tuple(outages), has_fleet)
+    return Scope(question, cut, tuple(commitments), tuple(outages), has_fleet=False)
 
 
 def _commitments(
-    commitments: Iterable[Commitment], assets: set[str], sites: set[str]
+    commitments: Sequence[Commitment], rows: Iterable[CommitmentRow], assets: set[str], sites: set[str]
 ) -> Iterator[tuple[int, Commitment]]:
-    """Keep, by number, what is asked of these assets one by one, of groups among them, and of these sites."""
-    for number, commitment in enumerate(commitments):
+    """Keep, by number, what rows ask of these assets one by one, of groups among them, and of these sites."""
+    asked: dict[int, set[str]] = {}
+    for row in rows:
+        asked.setdefault(row.commitment, set()).update({row.asset} if row.asset else ())
+    for number in sorted(asked):
+        commitment = commitments[number]
         whom = commitment.applies_to
         if whom.assets is not None:
-            own = [asset for asset in whom.assets if asset in assets]
+            own = [asset for asset in whom.assets if asset in assets & asked[number]]
             if own:
                 applies_to = whom.model_copy(update={"assets": own})
                 yield number, commitment.model_copy(update={"applies_to": applies_to})

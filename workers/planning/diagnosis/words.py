@@ -35,6 +35,8 @@ def _sentence(trouble: Trouble, conflict: Conflict, reached: Sequence[Reached]) 
     if findings := screen(alone):
         return " ".join([findings[0].sentence, *had])
     members = [element for element in reversed(trouble.scope.elements) if element in conflict]
+    if not members:
+        return " ".join(["Even with everything asked left out there is no schedule.", *_physics(alone)])
     opening = "These cannot hold together" if len(members) > 1 else "This cannot be met"
     return " ".join([f"{opening}: {_listed(members)}.", *_physics(alone), *had])
 

@@ -38,6 +38,10 @@ class _Planned:
         """Write an instant as local time."""
         return "further notice" if instant is None else f"{instant.astimezone(self.zone):%Y-%m-%d %H:%M}"
 
+    def instant(self, instant: datetime | None) -> str:
+        """Write an instant as answers do, with the offset of the window's timezone."""
+        return "further notice" if instant is None else instant.astimezone(self.zone).isoformat()
+
     def lever(
         self,
         member: str,
@@ -89,7 +93,7 @@ def _ending_sooner(planned: _Planned) -> Lever:
         return f"{planned.name}: end at {planned.clock(until(step))} instead of {planned.clock(outage.to)}"
 
     return planned.lever(
-        "to", "local time", len(hit) - 1, lambda k: {"to": until(k)}, lambda k: planned.clock(until(k)), words
+        "to", "instant", len(hit) - 1, lambda k: {"to": until(k)}, lambda k: planned.instant(until(k)), words
     )
 
 
@@ -104,7 +108,7 @@ def _beginning_later(planned: _Planned) -> Lever:
         return f"{planned.name}: begin at {planned.clock(begin(step))} instead of {planned.clock(outage.from_)}"
 
     return planned.lever(
-        "from", "local time", len(hit) - 1, lambda k: {"from": begin(k)}, lambda k: planned.clock(begin(k)), words
+        "from", "instant", len(hit) - 1, lambda k: {"from": begin(k)}, lambda k: planned.instant(begin(k)), words
     )
 
 
@@ -123,10 +127,10 @@ def _as_long_but_later(planned: _Planned) -> Iterator[Lever]:
 
     yield planned.lever(
         "from",
-        "local time, as long",
+        "instant, as long",
         calendar.count - calendar.touching(outage.from_, outage.to).start,
         lambda k: {"from": begin(k), "to": begin(k) + length},
-        lambda k: planned.clock(begin(k)),
+        lambda k: planned.instant(begin(k)),
         words,
     )
 
