@@ -45,8 +45,8 @@ def is_possible_alone(job: Job, kept: Collection[Element]) -> bool:
 def most_of(job: Job, row: Element, left_out: Collection[Element]) -> float | None:
     """Return the most (of an `*_at_most` row the least) a row can reach with all but `left_out` held.
 
-    In h, MWh or MW times h, what was counted before in it; hours and energy beyond what is asked, too. None where the
-    rest cannot hold even if the row asks nothing.
+    In h, MWh or MW times h and to 1e-3 of those, what was counted before in it; hours and energy beyond what is asked,
+    too. None where the rest cannot hold even if the row asks nothing.
     """
     program, powers, clock = _formulated(job, [*left_out, row])
     program.value, program.squares = Affine({}), []
@@ -55,7 +55,7 @@ def most_of(job: Job, row: Element, left_out: Collection[Element]) -> float | No
     alone: Job = {**job, "commitments": [commitment]}
     others = {key for key in row_keys(alone, clock) if key[1:] != row.row[1:]}
     add_commitments(program, alone, powers, clock, others)
-    found = program.solve(1e-9, SECONDS)
+    found = program.solve(1e-6, SECONDS)
     if found.status not in (0, 2):
         raise RuntimeError("the solver ended with status", found.status)
     if found.value is None:
@@ -77,14 +77,14 @@ def _priced_at_one(commitment: dict[str, Any], row: Element, clock: Clock) -> fl
     span = clock.hours * len(clock)
     if kind.startswith("hours"):
         commitment["shortfall_price_per_hour"] = 1.0
-        commitment["hours"] = 0.0 if kind == "hours_at_most" else span + commitment["hours"] + 1e3 * clock.hours
+        commitment["hours"] = 0.0 if kind == "hours_at_most" else span + commitment["hours"] + 100.0
         return float(commitment["hours"])
     name = "shortfall_price_per_mw_per_hour" if kind == "reserve_holding" else "shortfall_price_per_mwh"
     commitment[name] = 1.0
     if kind == "energy_at_most":
         commitment["energy_mwh"] = 0.0
     if kind == "energy_at_least":
-        commitment["energy_mwh"] += 1e3
+        commitment["energy_mwh"] += 100.0
     return float(commitment["energy_mwh"]) if "energy_mwh" in commitment else _due(commitment, row, clock)
 
 

@@ -67,9 +67,10 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
     if not all(choices):
         yield f"{what}: a pointer names no other element"
         return
+    too_much: list[str] = []
     reached: list[float] = []
     for sets in product(*choices):
-        left_out = list(dict.fromkeys(chain.from_iterable(sets)))
+        left_out = [element for element in dict.fromkeys(chain.from_iterable(sets)) if element not in elsewhere]
         most = most_of(document, row, [*left_out, *elsewhere])
         if most is None:
             continue
@@ -77,11 +78,14 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
         # Energy is asked for up to what is due; hours are counted beyond it.
         close = abs(figure - most) <= (ROUND_OFF if unit == "hours" else STEP)
         if close or (unit != "hours" and most > due and abs(figure - due) <= STEP):
-            left_out = [element for element in left_out if element not in elsewhere]
             near = [element for element in rest if element not in elsewhere]
-            yield from _smaller_sets(document, row, near, left_out, elsewhere)
-            return
-    yield f"{what}: {figure} {unit}, the oracle says {reached or 'that the rest cannot hold'}"
+            found = list(_smaller_sets(document, row, near, left_out, elsewhere))
+            if not found:
+                return
+            too_much += found
+    yield from too_much[:1] or [
+        f"{what}: {figure} {unit} of {due}, the oracle says {reached or 'the rest cannot hold'}"
+    ]
 
 
 def _read_as(pointer: str, rest: list[Element]) -> list[tuple[Element, ...]]:

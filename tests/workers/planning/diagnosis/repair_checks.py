@@ -93,8 +93,10 @@ def _wrong_changes(
             yield f"{change.pointer} becomes {new}, not {change.to}"
         if not isinstance(old, dict | list) and old is not None and not _is_same(old, change.from_):
             yield f"{change.pointer} is {old}, not {change.from_}"
-    places = [change.pointer for change in repair.changes]
-    for path in changed:
+    places, clock = [change.pointer for change in repair.changes], read_clock(document["window"])
+    for path, (old, new) in changed.items():
+        if old is None and _is_same(_meant(document, clock, path, old), new):
+            continue  # A default is written down, so that it stays where what it follows from is changed.
         where = "/" + "/".join(str(step) for step in path)
         if not any(where.startswith(_thing(place)) or place.startswith(where) for place in places):
             yield f"the patch changes {where}, which no change names"

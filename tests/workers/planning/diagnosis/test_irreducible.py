@@ -181,8 +181,14 @@ PLANTED: dict[str, tuple[Callable[[Document], None], str]] = {
     "no conflict": (_into("conflicts", value=[]), "no conflict is named"),
     "a conflict twice": (_twice("conflicts"), "named twice"),
     "a reducible conflict": (_into("conflicts", 0, "irreducible", value=False), "not irreducible in a complete"),
-    "too much attainable": (_into("attainable", 0, "attainable_hours", value=3.0), "3.0 hours, the oracle says [2.0]"),
-    "too little attainable": (_into("attainable", 0, "attainable_hours", value=1.0), "1.0 hours, the oracle says"),
+    "too much attainable": (
+        _into("attainable", 0, "attainable_hours", value=3.0),
+        "3.0 hours of 3.0, the oracle says [2.0]",
+    ),
+    "too little attainable": (
+        _into("attainable", 0, "attainable_hours", value=1.0),
+        "1.0 hours of 3.0, the oracle says",
+    ),
     "another figure asked for": (_into("attainable", 0, "required_hours", value=4.0), "asked are 3.0"),
     "attainable in another unit": (_into("attainable", 0, "attainable_hours", value=None), "no figures in hours"),
     "attainable of another": (_into("attainable", 0, "commitment", value="morning"), "about no binding row"),
