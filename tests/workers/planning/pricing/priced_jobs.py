@@ -8,6 +8,7 @@ from tests.oracles.formulation import Answer, formulate, solve
 from tests.oracles.formulation_clock import read_clock
 from tests.oracles.random_mixed import mixed_request
 from tests.workers.planning.jobs import answer, hours, job, store
+from workers.planning.limits import Limits, Unwatched
 
 Document = dict[str, Any]
 
@@ -15,6 +16,23 @@ GAP = 1e-6
 ORACLE_SECONDS = 120.0
 SMALL_DAY = [10.0, 10.0, 20.0, 50.0, 40.0, 30.0]
 """Prices of tests/reference/storage_small.json."""
+
+
+class LateAfter(Unwatched):
+    """A watch whose clock jumps past the time for solving, out of ten seconds, once a phase is reported."""
+
+    def __init__(self, phase: str) -> None:
+        self._phase = phase
+        self._now = 0.0
+
+    def progress(self, phase: str, done: float) -> None:  # noqa: ARG002
+        """Jump at the phase."""
+        if phase == self._phase:
+            self._now = 9.2
+
+    def limits(self) -> Limits:
+        """Give ten seconds on the watch's clock."""
+        return Limits(10.0, 1, 0.0, clock=lambda: self._now)
 
 
 def explained(document: Document) -> Schedule:
