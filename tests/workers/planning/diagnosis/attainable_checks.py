@@ -75,9 +75,7 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
         if most is None:
             continue
         reached.append(most)
-        # Energy is asked for up to what is due; hours are counted beyond it.
-        close = abs(figure - most) <= (ROUND_OFF if unit == "hours" else STEP)
-        if close or (unit != "hours" and most > due and abs(figure - due) <= STEP):
+        if _says(commitment, figure, due, most):
             near = [element for element in rest if element not in elsewhere]
             found = list(_smaller_sets(document, row, near, left_out, elsewhere))
             if not found:
@@ -86,6 +84,18 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
     yield from too_much[:1] or [
         f"{what}: {figure} {unit} of {due}, the oracle says {reached or 'the rest cannot hold'}"
     ]
+
+
+def _says(commitment: Document, figure: float, due: float, most: float) -> bool:
+    """Tell whether a figure is the oracle's, or what is due where that can be had.
+
+    Only hours owed are counted to the last one that can be had.
+    """
+    close = ROUND_OFF if "hours" in commitment else STEP
+    if abs(figure - most) <= close:
+        return True
+    is_met = most <= due if commitment["kind"].endswith("at_most") else most >= due
+    return commitment["kind"] != "hours_at_least" and is_met and abs(figure - due) <= close
 
 
 def _read_as(pointer: str, rest: list[Element]) -> list[tuple[Element, ...]]:
