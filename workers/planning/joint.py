@@ -48,8 +48,8 @@ EXACT_ENOUGH = 1e-11
 GAP_SHARE_NEAR = 0.5
 """A model near the LP relaxation is solved to this share of the gap: what it loses to the bound comes on top."""
 
-GAP_SHARE_ABOVE = 0.9
-"""Only what is better by this share of the gap is looked for from a start; the rest of the gap is for round-off."""
+ROUND_OFF = 1e-8
+"""Share of the margin that a proof leaves of the gap: the audit's margin is not the model's to the last digit."""
 
 LITTLE_LEFT_GAP = 1e-9
 """Where powers are given, little is left to choose, and nothing of it should be given away."""
@@ -119,7 +119,8 @@ class _Search:
         That prunes as a start would, which HiGHS is not given (`solvers.highs.solve`).
         """
         assert self.margin is not None
-        enough = self.margin + GAP_SHARE_ABOVE * allowed_gap(self.instance, self.margin)
+        allowed = allowed_gap(self.instance, self.margin)
+        enough = self.margin + max(allowed - ROUND_OFF * max(abs(self.margin), MONEY_UNIT), allowed / 2)
         ending = self._run(assembled.with_margin_at_least(enough).matrix, self._left(), self.watch)
         self.last = Stopped.WITHIN_GAP if ending.stopped is Stopped.INFEASIBLE else ending.stopped
         self.bound = min(self.bound, max(ending.bound, enough))
