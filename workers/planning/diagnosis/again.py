@@ -8,11 +8,16 @@ import numpy as np
 
 from schemas.job import ScheduleJob
 from schemas.schedule import Schedule
+from workers.planning.assembly import UnitPlan
 from workers.planning.diagnosis.feasibility import Solving
 from workers.planning.instance import Instance, instance_of
 from workers.planning.joint import Solution
 from workers.planning.methods import Choice, Found
 from workers.planning.parts import independent_parts
+
+SHARE = 0.05
+LEAST_SECONDS = 1.0
+"""A part may take this share of the time left, or so many seconds; what it has found by then is planned."""
 
 Audited = Callable[[ScheduleJob, Choice, Found], Schedule]
 
@@ -37,13 +42,13 @@ class Planner:
             solutions.append(solution)
         return self.audited(job, choice_of(parts), Found(choice_of(parts), tuple(solutions)))
 
-    def solution(self, part: Instance, solving: Solving) -> Solution:
-        """Solve a part, or remember what was found for the same one; raises CutShort."""
+    def solution(self, part: Instance, solving: Solving, earlier: tuple[UnitPlan, ...] | None = None) -> Solution:
+        """Solve a part, or remember what was found for the same one; begins from `earlier` plans. Raises CutShort."""
         whose = tuple(unit.id for unit in part.units) + tuple(meter.id for meter in part.meters)
         known = self._known.get(whose)
         if known is not None and is_same(known[0], part):
             return known[1]
-        solution = solving.solve(part)
+        solution = solving.solve(part, max(LEAST_SECONDS, SHARE * solving.seconds_left), earlier)
         if solution.plans is not None:
             self._known[whose] = (part, solution)
         return solution

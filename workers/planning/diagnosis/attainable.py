@@ -1,6 +1,6 @@
 """How far each commitment can be met: the least it must miss with everything else held."""
 
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Collection, Iterable, Iterator
 from dataclasses import dataclass, replace
 from math import ceil, floor
 
@@ -30,12 +30,12 @@ class Reached:
     left_out: tuple[Element, ...]
 
 
-def reached(trouble: Trouble, solving: Solving) -> Iterator[Reached]:
-    """Tell of every row in a conflict how far it can be met; raises CutShort."""
+def reached(trouble: Trouble, known: Collection[Element], solving: Solving) -> Iterator[Reached]:
+    """Tell of every row in a conflict, but for those known, how far it can be met; raises CutShort."""
     scope = trouble.scope
     named = frozenset().union(*trouble.conflicts)
     for row in scope.instance.rows:
-        if row.price is None and row_of(row) in named:
+        if row.price is None and row_of(row) in named and row_of(row) not in known:
             left_out = _in_the_way(trouble, row_of(row), trouble.tester(solving))
             least = least_shortfall(scope, row, left_out, solving)
             required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
@@ -79,13 +79,15 @@ def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) ->
     hours, grain = instance.hours, grain_of(row, instance.hours)
     bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
     rows = tuple(replace(other, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
-    found = solving.solve(replace(bare, rows=rows, absolute_gap=grain * CLOSE, relative_gap=1e-9))
+    # hours come in whole intervals: less than one of them open is none
+    gap = grain * (1 - 5 * CLOSE if isinstance(row, HoursRow) else CLOSE)
+    found = solving.solve(replace(bare, rows=rows, absolute_gap=gap, relative_gap=1e-9))
     if found.margin is None:
         raise solving.cut_short()
     missed, proven = -found.margin, -found.bound
     if isinstance(row, HoursRow):
         had = _most_intervals(row, missed, hours)
-        if had < _most_intervals(row, proven - CLOSE * grain, hours):
+        if had < min(whole_intervals(row.due_hours, hours), floor((row.due_hours - proven) / hours + 2 * CLOSE)):
             raise solving.cut_short()
         return max(0.0, row.due_hours - hours * had)
     if isinstance(row, CeilingRow):

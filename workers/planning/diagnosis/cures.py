@@ -6,10 +6,12 @@ from itertools import combinations
 
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.enumeration import shrink
-from workers.planning.diagnosis.feasibility import Solving
+from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.levers import levers_of
 from workers.planning.diagnosis.levers.lever import Lever, Values
 from workers.planning.diagnosis.localise import Trouble
+from workers.planning.instance import Instance
+from workers.planning.screening import screen
 
 MOST_LEVERS_TOGETHER = 4
 MOST_COMBINED = 6
@@ -29,33 +31,56 @@ class Move:
         return self.lever.values(self.step)
 
 
+STRIDE = 4
+"""Strides towards a step that cures grow by this factor."""
+
 Cure = tuple[Move, ...]
 
 
-def cures_of(trouble: Trouble, solving: Solving, guesses: Mapping[str, float]) -> Iterator[Cure]:
-    """Give the least changes that cure a part, single ones first; `guesses` are figures by the pointer of a lever.
+class CureSearch:
+    """The search for the cures of a part; it goes on where it was left, with the time it is given then.
 
-    Raises CutShort.
+    `reached` are hours or energy that rows can have at most, by the pointer of the lever that asks for them, and
+    whether that alone cures.
     """
-    search = _Search(trouble, solving, guesses)
-    levers = search.levers()
-    found = False
-    for lever in levers:
-        if all(lever.covers & conflict for conflict in trouble.conflicts) and (cure := search.least((lever,))):
-            found = True
-            yield cure
-    if not found:
-        yield from search.combined(levers)
 
-
-class _Search:
-    def __init__(self, trouble: Trouble, solving: Solving, guesses: Mapping[str, float]) -> None:
+    def __init__(self, trouble: Trouble, reached: Mapping[str, tuple[float, bool]]) -> None:
+        self.cures: list[Cure] = []
+        self.is_done = False
         self._trouble = trouble
-        self._solving = solving
-        self._guesses = guesses
+        self._reached = reached
         self._tried: dict[frozenset[tuple[Lever, int]], bool] = {}
+        self._search: Iterator[Cure] | None = None
+        self._solving: Solving | None = None
 
-    def levers(self) -> list[Lever]:
+    def go_on(self, solving: Solving, most: int | None = None) -> None:
+        """Look for cures until there are `most` of them, or no more; raises CutShort."""
+        self._solving = solving
+        if self._search is None:
+            self._search = self._all()
+        while not self.is_done and (most is None or len(self.cures) < most):
+            try:
+                cure = next(self._search, None)
+            except CutShort:
+                self._search = iter(())  # a generator that raised has ended
+                raise
+            if cure is None:
+                self.is_done = True
+            else:
+                self.cures.append(cure)
+
+    def _all(self) -> Iterator[Cure]:
+        """Give the least changes that cure, single ones first."""
+        levers = self._levers()
+        found = False
+        for lever in levers:
+            if all(lever.covers & conflict for conflict in self._trouble.conflicts) and (cure := self._least((lever,))):
+                found = True
+                yield cure
+        if not found:
+            yield from self._combined(levers)
+
+    def _levers(self) -> list[Lever]:
         """List the levers of all that is named, and make sure that all of them together would do.
 
         A conflict that they leave is taken note of, with its levers; none where a conflict has no lever at all.
@@ -67,10 +92,12 @@ class _Search:
             if any(eased.isdisjoint(conflict) for conflict in self._trouble.conflicts):
                 return []
             if self._would_do(eased):
-                return sorted(levers, key=lambda lever: lever.pointer not in self._guesses)
+                return sorted(levers, key=lambda lever: lever.pointer not in self._reached)
 
-    def least(self, levers: tuple[Lever, ...]) -> Cure | None:
+    def _least(self, levers: tuple[Lever, ...]) -> Cure | None:
         """Find the least steps of some levers that cure together, one after the other; None where all do not."""
+        if len(levers) == 1 and (known := self._known(levers[0])):
+            return (known,)
         steps = {lever: lever.steps for lever in levers}
         if not self._is_cured(steps):
             return None
@@ -79,7 +106,7 @@ class _Search:
             steps[lever] = 0 if self._is_cured(without) else self._least_step(lever, steps)
         return tuple(Move(lever, step) for lever, step in steps.items() if step > 0)
 
-    def combined(self, levers: list[Lever]) -> Iterator[Cure]:
+    def _combined(self, levers: list[Lever]) -> Iterator[Cure]:
         """Cure by several levers that together touch every conflict; conflicts that show up on the way are added."""
         found: list[frozenset[str]] = []
         for size in range(2, MOST_LEVERS_TOGETHER + 1):
@@ -91,7 +118,7 @@ class _Search:
                     continue
                 if not self._would_do(frozenset[Element]().union(*(lever.covers for lever in chosen))):
                     continue
-                if cure := self.least(chosen):
+                if cure := self._least(chosen):
                     found.append(frozenset(move.lever.pointer for move in cure))
                     yield cure
                     if len(found) == MOST_COMBINED:
@@ -102,7 +129,7 @@ class _Search:
     def _would_do(self, eased: frozenset[Element]) -> bool:
         """Tell whether leaving out all that is eased would cure; what still conflicts is taken note of."""
         trouble = self._trouble
-        is_possible = trouble.tester(self._solving)
+        is_possible = trouble.tester(self._time())
         rest = frozenset(trouble.scope.elements) - eased
         if is_possible(rest):
             return True
@@ -114,43 +141,65 @@ class _Search:
         if not moved:
             return False
         if moved not in self._tried:
-            job = self._trouble.scope.job
-            for lever, step in steps.items():
-                job = lever.apply(job, step) if step else job
-            self._tried[moved] = self._solving.is_possible(self._trouble.scope.instance_of(job))
+            self._tried[moved] = self._time().is_possible(self._at(steps))
         return self._tried[moved]
 
+    def _at(self, steps: Mapping[Lever, int]) -> Instance:
+        job = self._trouble.scope.job
+        for lever, step in steps.items():
+            job = lever.apply(job, step) if step else job
+        return self._trouble.scope.instance_of(job)
+
     def _least_step(self, lever: Lever, steps: Mapping[Lever, int]) -> int:
-        """Find the step that cures while the one before does not; step 0 is known not to, the last one to."""
+        """Find the step that cures while the one before does not; step 0 is known not to, the last one to.
+
+        Arithmetic tells from where on it is worth asking a solver.
+        """
+        hopeless = least_step(lambda step: not screen(self._at({**steps, lever: step})), 0, lever.steps) - 1
 
         def cures(step: int) -> bool:
             return self._is_cured({**steps, lever: step})
 
-        return least_step(cures, lever.steps, self._guess(lever))
+        return least_step(cures, hopeless, lever.steps, self._guess(lever))
+
+    def _known(self, lever: Lever) -> Move | None:
+        """Give the step known to be the least that cures: what the only row of a commitment can have at most."""
+        step = self._guess(lever)
+        return Move(lever, step) if step and self._reached[lever.pointer][1] else None
+
+    def _time(self) -> Solving:
+        assert self._solving is not None
+        return self._solving
 
     def _guess(self, lever: Lever) -> int | None:
-        figure = self._guesses.get(lever.pointer)
+        figure, _ = self._reached.get(lever.pointer, (None, False))
         if figure is None:
             return None
-        return least_step(lambda step: float(lever.shown(step)) <= figure + 1e-9, lever.steps, None)
+        if float(lever.shown(lever.steps)) > figure + 1e-9:
+            return None
+        return least_step(lambda step: float(lever.shown(step)) <= figure + 1e-9, 0, lever.steps)
 
 
-def least_step(cures: Callable[[int], bool], last: int, guess: int | None) -> int:
-    """Find a step that cures while the one before it does not, by halving, near a guess first."""
-    fails, works = 0, last
-    if guess is not None and 0 < guess < last:
-        if cures(guess):
-            works = guess
-            if guess > 1 and cures(guess - 1):
-                works = guess - 1
-            else:
-                return guess
+def least_step(cures: Callable[[int], bool], fails: int, works: int, near: int | None = None) -> int:
+    """Find a step that cures while the one before it does not: by strides from below or from a guess, then by halving.
+
+    `fails` is a step that is known not to cure, `works` one that does.
+    """
+    if near is not None and fails < near < works:
+        if cures(near):
+            works = near
+            if near - 1 == fails or not cures(near - 1):
+                return near
+            works = near - 1
         else:
-            fails = guess
+            fails = near
+    stride = 1
+    while fails + stride < works:
+        if cures(fails + stride):
+            works = fails + stride
+            break
+        fails, stride = fails + stride, stride * STRIDE
     while works - fails > 1:
         middle = (fails + works) // 2
-        if cures(middle):
-            works = middle
-        else:
-            fails = middle
+        fails, works = (fails, middle) if cures(middle) else (middle, works)
     return works

@@ -3,23 +3,32 @@
 Each step has a share of the time, and what it found stays where time cuts it; the answer then says what is not done.
 """
 
+from collections import Counter
 from collections.abc import Callable, Collection
 from dataclasses import dataclass, field
+from math import inf
 
 from schemas.diagnosis import Repair
 from workers.planning.diagnosis.again import Audited, Planner
 from workers.planning.diagnosis.attainable import Reached, is_ceiling, reached
-from workers.planning.diagnosis.cures import Cure, cures_of
+from workers.planning.diagnosis.cures import CureSearch
 from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.localise import Trouble, find_conflicts, search_further, troubles_of
 from workers.planning.diagnosis.nearest import Nearest, key_of, nearest
-from workers.planning.diagnosis.repairs import repairs_of
-from workers.planning.diagnosis.scope import Question
+from workers.planning.diagnosis.repairs import Joined, repairs_of
+from workers.planning.diagnosis.scope import Question, row_of
 from workers.planning.parts import independent_parts
 from workers.planning.rows import HoursRow
 
 SHARES = {"conflicts": 0.4, "more conflicts": 0.25, "attainable": 0.3, "cures": 0.4, "repairs": 0.5, "nearest": 0.9}
 """Share of the time that is left which each step may take, in this order."""
+
+FIRST_REPAIR = 0.45
+"""Progress when a repair has been planned."""
+
+PATIENCE = 5.0
+LEAST_PATIENCE_SECONDS = 2.0
+"""The search for conflicts beyond the first may take so many times what those took, and so many seconds in any case."""
 
 MOST_CONFLICTS = 50
 """Conflicts of one part after which the search for more ends."""
@@ -32,8 +41,9 @@ class Findings:
     question: Question
     troubles: list[Trouble] = field(default_factory=list)
     reached: list[Reached] = field(default_factory=list)
-    cures: list[list[Cure]] = field(default_factory=list)
+    searches: list[CureSearch] = field(default_factory=list)
     repairs: list[Repair] = field(default_factory=list)
+    tried: set[Joined] = field(default_factory=set)
     nearest: Nearest | None = None
     no_nearest: str | None = None
     cut_off: list[str] = field(default_factory=list)
@@ -49,19 +59,26 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
     found = Findings(question)
     planner = Planner(audited)
 
-    def step(name: str, done: float, work: Callable[[Solving], None]) -> None:
+    def step(name: str, done: float, work: Callable[[Solving], None], most: float = inf) -> float:
+        began = solving.limits.clock()
         solving.watch.progress("diagnosing", done)
         try:
-            work(solving.until(SHARES[name]))
+            work(solving.until(SHARES[name], most))
         except CutShort:
-            found.cut_off.append(name)
+            if name not in found.cut_off:
+                found.cut_off.append(name)
+        return solving.limits.clock() - began
 
-    step("conflicts", 0.1, lambda s: _find_conflicts(found, proven, s))
-    step("more conflicts", 0.2, lambda s: _search_further(found, s))
-    step("attainable", 0.3, lambda s: _find_reached(found, s))
-    step("cures", 0.4, lambda s: _find_cures(found, s))
-    step("repairs", 0.5, lambda s: _find_repairs(found, planner, s))
-    step("nearest", 0.7, lambda s: _find_nearest(found, planner, s))
+    first = step("conflicts", 0.1, lambda s: _find_conflicts(found, proven, s))
+    step("attainable", 0.2, lambda s: _find_reached(found, s))
+    step("cures", 0.3, lambda s: _find_cures(found, s, 1))
+    step("repairs", 0.4, lambda s: _find_repairs(found, planner, s))
+    patience = max(LEAST_PATIENCE_SECONDS, PATIENCE * first)
+    step("more conflicts", 0.5, lambda s: _search_further(found, s), patience)
+    step("attainable", 0.6, lambda s: _find_reached(found, s))
+    step("cures", 0.7, lambda s: _find_cures(found, s, None))
+    step("repairs", 0.8, lambda s: _find_repairs(found, planner, s))
+    step("nearest", 0.9, lambda s: _find_nearest(found, planner, s))
     return found
 
 
@@ -75,31 +92,40 @@ def _find_conflicts(found: Findings, proven: Collection[tuple[str, ...]], solvin
 
 def _find_reached(found: Findings, solving: Solving) -> None:
     for trouble in found.troubles:
-        for one in reached(trouble, solving):
+        for one in reached(trouble, {row_of(one.row) for one in found.reached}, solving):
             found.reached.append(one)
 
 
-def _find_cures(found: Findings, solving: Solving) -> None:
-    for trouble in found.troubles:
-        cures: list[Cure] = []
-        found.cures.append(cures)
-        for cure in cures_of(trouble, solving, _guesses(found)):
-            cures.append(cure)  # noqa: PERF402
+def _find_cures(found: Findings, solving: Solving, most: int | None) -> None:
+    if not found.searches:
+        found.searches = [CureSearch(trouble, _reached_by_lever(found, trouble)) for trouble in found.troubles]
+    for search in found.searches:
+        search.go_on(solving, most)
+
+
+def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, tuple[float, bool]]:
+    """Give for each commitment the fewest hours, or the least energy, that any of its rows can have.
+
+    Asking for no more hours cures where it is the only row of its commitment and nothing had to be left out for it.
+    """
+    rows = Counter(row.commitment for row in trouble.scope.instance.rows)
+    figures: dict[str, tuple[float, bool]] = {}
+    for one in found.reached:
+        if is_ceiling(one.row):
+            continue
+        is_hours = isinstance(one.row, HoursRow)
+        place = f"{one.row.pointer}/{'hours' if is_hours else 'energy_mwh'}"
+        cures = is_hours and rows[one.row.commitment] == 1 and not one.left_out
+        least, _ = figures.get(place, (one.attainable, True))
+        figures[place] = (min(one.attainable, least), cures)
+    return figures
 
 
 def _find_repairs(found: Findings, planner: Planner, solving: Solving) -> None:
-    for repair in repairs_of(found.question, found.cures, planner, solving):
+    cures = [search.cures for search in found.searches]
+    for repair in repairs_of(found.question, cures, planner, solving, found.tried):
         found.repairs.append(repair)
-
-
-def _guesses(found: Findings) -> dict[str, float]:
-    """Give for each commitment the fewest hours, or the least energy, that any of its rows can have."""
-    guesses: dict[str, float] = {}
-    for one in found.reached:
-        if not is_ceiling(one.row):
-            place = f"{one.row.pointer}/{'hours' if isinstance(one.row, HoursRow) else 'energy_mwh'}"
-            guesses[place] = min(one.attainable, guesses.get(place, one.attainable))
-    return guesses
+        solving.watch.progress("diagnosing", FIRST_REPAIR)
 
 
 def _find_nearest(found: Findings, planner: Planner, solving: Solving) -> None:

@@ -20,17 +20,21 @@ CHUNKS = 4
 
 
 def shrink(
-    members: Collection[Member], is_possible: Callable[[frozenset[Member]], bool], order: Sequence[Member]
+    members: Collection[Member],
+    is_possible: Callable[[frozenset[Member]], bool],
+    order: Sequence[Member],
+    is_likely: Callable[[frozenset[Member]], bool] | None = None,
 ) -> frozenset[Member]:
     """Shrink an impossible set to a conflict; members that come early in `order` are spared first.
 
     The deletion filter (Chinneck, Feasibility and Infeasibility in Optimization, 2008; from memory), in chunks that
-    double where they can be spared and halve where not. Every member of the result is dropped once more, from the
-    result itself: where that is still impossible, the smaller set is shrunk.
+    double where they can be spared and halve where not. On the way `is_likely` may answer, which may err towards
+    possible. Every member of the result is dropped once more, from the result itself: where that is still impossible,
+    the smaller set is shrunk.
     """
     found = frozenset(members)
     while True:
-        found = _filtered([member for member in order if member in found], is_possible)
+        found = _filtered([member for member in order if member in found], is_likely or is_possible)
         spare = next((member for member in order if member in found and not is_possible(found - {member})), None)
         if spare is None:
             return found
@@ -56,11 +60,12 @@ def independent_conflicts(
     members: Sequence[Member],
     is_possible: Callable[[frozenset[Member]], bool],
     known: Collection[frozenset[Member]] = (),
+    is_likely: Callable[[frozenset[Member]], bool] | None = None,
 ) -> Iterator[frozenset[Member]]:
     """Find conflicts that share no member with each other nor with the known ones, until what is left is possible."""
     left = frozenset(members).difference(*known)
     while not is_possible(left):
-        conflict = shrink(left, is_possible, members)
+        conflict = shrink(left, is_possible, members, is_likely)
         yield conflict
         left -= conflict
         if not conflict:

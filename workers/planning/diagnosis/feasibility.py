@@ -1,9 +1,11 @@
 """Whether something is possible at all, money aside: the question that a diagnosis asks over and over."""
 
 from dataclasses import dataclass, field, replace
+from math import inf
 
 import numpy as np
 
+from workers.planning.assembly import UnitPlan
 from workers.planning.flows import FlexibleLoadUnit, RenewableUnit
 from workers.planning.generator import GeneratorUnit
 from workers.planning.instance import Instance, Meter
@@ -37,16 +39,21 @@ class Solving:
         """Seconds until the end; below zero there is none."""
         return self.ends - self.limits.clock()
 
-    def until(self, share: float) -> "Solving":
-        """Give a budget that ends after a share of what is left."""
-        return replace(self, ends=self.limits.clock() + max(self.seconds_left, 0.0) * share, solves=0)
+    def until(self, share: float, most: float) -> "Solving":
+        """Give a budget that ends after a share of what is left, or after so many seconds."""
+        seconds = min(max(self.seconds_left, 0.0) * share, most)
+        return replace(self, ends=self.limits.clock() + seconds, solves=0)
 
-    def solve(self, instance: Instance) -> Solution:
-        """Solve an instance with the time left; raises CutShort where there is none."""
+    def solve(self, instance: Instance, most: float = inf, earlier: tuple[UnitPlan, ...] | None = None) -> Solution:
+        """Solve an instance, from `earlier` plans where given, with the time left or `most` seconds of it.
+
+        Raises CutShort where there is no time left.
+        """
         if self.seconds_left <= 0 or self.watch.is_stop_asked():
             raise CutShort("no time left")
         self.solves += 1
-        return solve_jointly(instance, self.limits, self.watch, seed=self.seed, seconds=self.seconds_left)
+        seconds = min(self.seconds_left, most)
+        return solve_jointly(instance, self.limits, self.watch, seed=self.seed, seconds=seconds, earlier=earlier)
 
     @staticmethod
     def cut_short() -> CutShort:

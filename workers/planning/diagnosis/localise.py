@@ -42,6 +42,24 @@ class Trouble:
 
         return is_possible
 
+    def guesser(self, solving: Solving, scope: Scope | None = None) -> Callable[[frozenset[Element]], bool]:
+        """Give the same question, answered from what was found for larger and smaller sets where that is known.
+
+        Leaving out an outage lets ramps bind again, so a part of what is possible need not be: what comes of this is to
+        be tested once more.
+        """
+        is_possible = self.tester(solving, scope)
+        known: dict[frozenset[Element], bool] = {}
+
+        def is_likely(kept: frozenset[Element]) -> bool:
+            for other, possible in known.items():
+                if (kept <= other) if possible else (kept >= other):
+                    return possible
+            known[kept] = is_possible(kept)
+            return known[kept]
+
+        return is_likely
+
 
 def troubles_of(
     question: Question, parts: Iterable[Instance], proven: Collection[tuple[str, ...]], solving: Solving
@@ -62,8 +80,8 @@ def troubles_of(
 def find_conflicts(question: Question, trouble: Trouble, solving: Solving) -> None:
     """Find conflicts of a part that share nothing, the smallest scopes first; raises CutShort."""
     for scope in (*_smaller(question, trouble.part), trouble.scope):
-        is_possible = trouble.tester(solving, scope)
-        for conflict in independent_conflicts(scope.elements, is_possible, trouble.conflicts):
+        is_possible, is_likely = trouble.tester(solving, scope), trouble.guesser(solving, scope)
+        for conflict in independent_conflicts(scope.elements, is_possible, trouble.conflicts, is_likely):
             trouble.conflicts.append(conflict)
 
 

@@ -37,8 +37,14 @@ EXCESS_PRICE = 1000.0
 WORTH_NAMING = 1e-6
 """Less is within the audit's tolerance, MWh or hours."""
 
-GRAIN_MWH = 1e-3
-"""The total that is missing is the least to this much, MWh."""
+GRAIN_MWH = 0.01
+"""The total that is missing is the least to this much, MWh, or to `GRAIN_SHARE` of itself."""
+
+GRAIN_SHARE = 1e-3
+
+SHARE = 0.2
+LEAST_SECONDS = 1.0
+"""The search for the least may take this share of the time left, or so many seconds; then the best it has is taken."""
 
 PRICES = {
     "hours_at_least": "shortfall_price_per_hour",
@@ -73,10 +79,13 @@ def nearest(
     parts, solutions, job = [], [], question.job
     missing: list[Shortfall] = []
     for original in originals:
-        part = _lowered(original, solving) if key_of(original) in infeasible else original
-        if part is None:
-            return None
-        solution = planner.solution(part, solving)
+        part, start = original, None
+        if key_of(original) in infeasible:
+            start = _least_missing(original, solving)
+            if start is None:
+                return None
+            part = _asking_no_more(original, start)
+        solution = planner.solution(part, solving, start)
         if solution.plans is None:
             raise solving.cut_short()
         parts.append(part)
@@ -88,8 +97,8 @@ def nearest(
     return Nearest(job, choice, Found(choice, tuple(solutions)), tuple(missing))
 
 
-def _lowered(part: Instance, solving: Solving) -> Instance | None:
-    """Ask of a part no more than can be had with the least missing in total; None where nothing can."""
+def _least_missing(part: Instance, solving: Solving) -> tuple[UnitPlan, ...] | None:
+    """Find what a part does with the least missing in total; None where nothing can be done."""
     bare = without_money(part, GRAIN_MWH / 10 / (3 * most_energy(part) + 1))
     found = solving.solve(
         replace(
@@ -98,15 +107,20 @@ def _lowered(part: Instance, solving: Solving) -> Instance | None:
             units=tuple(replace(u, target_price=1.0) if isinstance(u, Store) else u for u in bare.units),
             meters=tuple(replace(meter, excess_price=EXCESS_PRICE) for meter in bare.meters),
             fleet=replace(bare.fleet, excess_price=EXCESS_PRICE),
-            relative_gap=1e-6,
+            relative_gap=GRAIN_SHARE,
             absolute_gap=GRAIN_MWH,
-        )
+        ),
+        max(LEAST_SECONDS, SHARE * solving.seconds_left),
     )
     if found.stopped is Stopped.INFEASIBLE:
         return None
     if found.plans is None:
         raise solving.cut_short()
-    plans = found.plans
+    return found.plans
+
+
+def _asking_no_more(part: Instance, plans: tuple[UnitPlan, ...]) -> Instance:
+    """Ask of a part no more than a schedule gives."""
     return replace(
         part,
         rows=tuple(lowered(row, plans, part.hours).row if row.price is None else row for row in part.rows),

@@ -12,20 +12,38 @@ from workers.planning.diagnosis.scope import Question
 
 MOST_REPAIRS = 12
 
+GAP = 0.005
+"""A repair is planned to this gap or to the job's own, the wider: its margin and bound say how good it can be."""
+
+Joined = frozenset[tuple[str, str, int]]
+"""What is moved together: pointers with units, and steps."""
+
 
 def repairs_of(
-    question: Question, cures: Sequence[Sequence[Cure]], planner: Planner, solving: Solving
+    question: Question,
+    cures: Sequence[Sequence[Cure]],
+    planner: Planner,
+    solving: Solving,
+    tried: set[Joined],
 ) -> Iterator[Repair]:
-    """Plan the request with each cure (one of every part that needs one) in place; raises CutShort."""
+    """Plan the request with each cure (one of every part that needs one) in place, but for those tried before.
+
+    Raises CutShort.
+    """
     if not cures or not all(cures):
         return
     document = document_of(question.job)
     for moves in _together(cures):
+        joined = frozenset((move.lever.pointer, move.lever.unit, move.step) for move in moves)
+        if joined in tried:
+            continue
+        tried.add(joined)
         values: Values = {}
         for move in moves:
             values |= move.values
         operations = patch_of(document, values)
-        schedule = planner.plan(patched_job(document, operations), solving)
+        job = patched_job(document, operations)
+        schedule = planner.plan(job.model_copy(update={"relative_gap": max(job.relative_gap, GAP)}), solving)
         if schedule is None or schedule.margin_bound is None:
             continue
         changes = [_change(move) for move in moves]
@@ -45,16 +63,9 @@ def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Move]]:
 
     A commitment may bind assets of several parts: it is not eased by its hours in one and its threshold in another.
     """
-    seen: set[frozenset[tuple[str, str, int]]] = set()
-    for wanted in [cures[0][0], *(cure for of_part in cures for cure in of_part[1:])]:
+    for wanted in [cures[0][0], *(cure for of_part in cures for cure in of_part[1:])][:MOST_REPAIRS]:
         chosen = [next((cure for cure in of_part if _places(cure) == _places(wanted)), of_part[0]) for of_part in cures]
-        moves = _joined(chosen)
-        key = frozenset((move.lever.pointer, move.lever.unit, move.step) for move in moves)
-        if key not in seen:
-            seen.add(key)
-            yield moves
-        if len(seen) == MOST_REPAIRS:
-            return
+        yield _joined(chosen)
 
 
 def _places(cure: Cure) -> frozenset[tuple[str, str]]:

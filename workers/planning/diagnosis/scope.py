@@ -11,7 +11,7 @@ from typing import Any
 
 from schemas.commitments import Commitment
 from schemas.fleet import Fleet, Storage
-from schemas.job import OneWindow, ScheduleJob
+from schemas.job import Initial, OneWindow, ScheduleJob
 from workers.planning.diagnosis.elements import (
     SIDES,
     Element,
@@ -23,7 +23,7 @@ from workers.planning.diagnosis.elements import (
 )
 from workers.planning.instance import Instance, instance_of
 from workers.planning.rows import CommitmentRow
-from workers.planning.store import Store
+from workers.planning.store import Store, initial_energy
 
 
 @dataclass(frozen=True)
@@ -126,6 +126,7 @@ def _edits(job: ScheduleJob, left_out: Collection[Element], outages: tuple[int, 
             for meter, limits in job.limits.items()
         },
     )
+    yield "initial", {**_assumed(job), **job.initial}
     numbered = zip(outages, job.outages, strict=True)
     yield "outages", [outage for number, outage in numbered if ("outage", outage.asset, number) not in gone]
     yield (
@@ -135,6 +136,17 @@ def _edits(job: ScheduleJob, left_out: Collection[Element], outages: tuple[int, 
             for asset, needs in job.energy_needs.items()
         },
     )
+
+
+def _assumed(job: ScheduleJob) -> dict[str, Initial]:
+    """Write down the initial energies that are assumed: they stay the numbers they are, whatever is left out."""
+    if job.missing_initial != "assume_middle":
+        return {}
+    return {
+        asset.id: Initial(stored_mwh=initial_energy(job, asset))
+        for asset in _fleet_of(job).assets
+        if isinstance(asset, Storage) and asset.id not in job.initial
+    }
 
 
 _NONE_WITHOUT = {
