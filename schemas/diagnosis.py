@@ -94,7 +94,7 @@ class Diagnosis(Answer):
     repairs: list[Repair] = []
     nearest_schedule: NearestSchedule | None = None
     no_nearest_schedule: str | None = Field(default=None, description="Why there is no nearest schedule.")
-    cut_off: list[str] = Field(default=[], description="What time did not suffice for.")
+    cut_off: list[str] = Field(default=[], description="What time did not suffice for, or the audit refused.")
     commitment_costs: list[CommitmentCost] | None = None
     assumptions: list[Assumption] = []
     cautions: list[str]

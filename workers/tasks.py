@@ -69,10 +69,11 @@ def run(job_id: str) -> dict[str, str]:
 
 
 class ReportingWatch(StoppableWatch):
-    """Keeps the latest progress for the main thread to report."""
+    """Keeps the latest progress for the main thread to report, and by how much a diagnosis may overrun the limit."""
 
     def __init__(self) -> None:
         super().__init__()
+        self.seconds_more = 0.0
         self._progress_lock = Lock()
         self._latest: tuple[str, float] | None = None
 
@@ -80,6 +81,10 @@ class ReportingWatch(StoppableWatch):
         """Take note; may be called from any thread."""
         with self._progress_lock:
             self._latest = (phase, done)
+
+    def more_time(self, seconds: float) -> None:
+        """Take note that a diagnosis has begun, which may take so many seconds more."""
+        self.seconds_more = seconds
 
     def take(self) -> tuple[str, float] | None:
         """Give what was noted since the last time."""
@@ -181,7 +186,7 @@ class Execution:
         limit = self._planning.seconds
         if limit is None:
             return None
-        past = self._clock() - self._began - max(limit, 0.0)
+        past = self._clock() - self._began - max(limit, 0.0) - self._watch.seconds_more
         if past > OVERRUN_SECONDS:
             log.error("job %s: planning ignored its time limit of %g s", self._attempt.job_id, limit)
             return self._attempt.fail(

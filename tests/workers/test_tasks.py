@@ -175,6 +175,24 @@ def test_a_plan_that_ignores_its_limit_is_given_up_and_not_tried_again(
     assert 5 + OVERRUN_SECONDS <= clock.now - began <= 5 + OVERRUN_SECONDS + 3
 
 
+def test_a_plan_that_has_become_a_diagnosis_may_take_as_long_again(
+    around: Surroundings, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    let_go = Event()
+
+    def diagnose(_job: Any, limits: Limits, watch: Watch) -> Any:
+        watch.more_time(limits.seconds)
+        assert let_go.wait(30)
+        return ANSWER
+
+    monkeypatch.setattr(tasks, "plan", diagnose)
+    clock = TickingClock(0.5)
+    began = clock.now
+    assert run(Attempt(), around, clock) == "failed"
+    let_go.set()
+    assert 5 + 5 + OVERRUN_SECONDS <= clock.now - began <= 5 + 5 + OVERRUN_SECONDS + 3
+
+
 def test_a_job_that_should_be_given_back_is(around: Surroundings, stubborn: Callable[[bool], Stubborn]) -> None:
     stubborn(False)
     around.give_back.set()

@@ -107,8 +107,8 @@ def _nearest(job: ScheduleJob, found: Findings, limits: Limits) -> tuple[Nearest
     if near is None:
         return None, found.no_nearest or "Time did not suffice to find it."
     replayed = replay(near.job, decisions_of(near.found))
-    if replayed.verification.violations:
-        raise PlanningError("the audit refuses the nearest schedule", replayed.verification.violations)
+    if violations := replayed.verification.violations:
+        return None, f"The audit refuses the one that was found, a fault of the planner: {violations[0].text}."
     effort = _effort(near.choice, near.found, limits)
     return nearest_schedule(answer.schedule(job, replayed, "infeasible", None, effort), near.missing), None
 

@@ -14,6 +14,7 @@ from workers.planning.instance import Instance, instance_of
 from workers.planning.joint import Solution
 from workers.planning.methods import Choice, Found
 from workers.planning.parts import independent_parts
+from workers.planning.proof import PlanningError
 
 SHARE = 0.05
 LEAST_SECONDS = 1.0
@@ -26,11 +27,15 @@ class Planner:
     """Plans part by part; a part that is the same in every figure is not solved twice."""
 
     def __init__(self, audited: Audited) -> None:
-        self.audited = audited
+        self.refused = 0
+        self._audited = audited
         self._known: dict[tuple[str, ...], tuple[Instance, Solution]] = {}
 
     def plan(self, job: ScheduleJob, solving: Solving) -> Schedule | None:
-        """Plan a job; None where it cannot be met. Raises CutShort where time decides nothing."""
+        """Plan a job; None where it cannot be met, or where the audit refuses what was found: that is counted.
+
+        Raises CutShort where time decides nothing.
+        """
         parts = tuple(independent_parts(instance_of(job)))
         solutions = []
         for part in parts:
@@ -40,7 +45,11 @@ class Planner:
                     return None
                 raise solving.cut_short()
             solutions.append(solution)
-        return self.audited(job, choice_of(parts), Found(choice_of(parts), tuple(solutions)))
+        try:
+            return self._audited(job, choice_of(parts), Found(choice_of(parts), tuple(solutions)))
+        except PlanningError:
+            self.refused += 1
+            return None
 
     def solution(self, part: Instance, solving: Solving, earlier: tuple[UnitPlan, ...] | None = None) -> Solution:
         """Solve a part, or remember what was found for the same one; begins from `earlier` plans. Raises CutShort."""

@@ -36,7 +36,10 @@ MOST_CONFLICTS = 50
 
 @dataclass
 class Findings:
-    """What a diagnosis knows so far; `cut_off` says what time did not suffice for."""
+    """What a diagnosis knows so far.
+
+    `cut_off` says what time did not suffice for, `refused` how many repairs the audit did not pass.
+    """
 
     question: Question
     troubles: list[Trouble] = field(default_factory=list)
@@ -47,6 +50,7 @@ class Findings:
     nearest: Nearest | None = None
     no_nearest: str | None = None
     cut_off: list[str] = field(default_factory=list)
+    refused: int = 0
 
     @property
     def is_complete(self) -> bool:
@@ -72,13 +76,14 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
     first = step("conflicts", 0.1, lambda s: _find_conflicts(found, proven, s))
     step("attainable", 0.2, lambda s: _find_reached(found, s))
     step("cures", 0.3, lambda s: _find_cures(found, s, 1))
-    step("repairs", 0.4, lambda s: _find_repairs(found, planner, s))
+    step("repairs", 0.4, lambda s: _find_repairs(found, planner, s, FIRST_REPAIR))
     patience = max(LEAST_PATIENCE_SECONDS, PATIENCE * first)
     step("more conflicts", 0.5, lambda s: _search_further(found, s), patience)
     step("attainable", 0.6, lambda s: _find_reached(found, s))
     step("cures", 0.7, lambda s: _find_cures(found, s, None))
-    step("repairs", 0.8, lambda s: _find_repairs(found, planner, s))
+    step("repairs", 0.8, lambda s: _find_repairs(found, planner, s, 0.85))
     step("nearest", 0.9, lambda s: _find_nearest(found, planner, s))
+    found.refused = planner.refused
     return found
 
 
@@ -121,11 +126,11 @@ def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, tuple[floa
     return figures
 
 
-def _find_repairs(found: Findings, planner: Planner, solving: Solving) -> None:
+def _find_repairs(found: Findings, planner: Planner, solving: Solving, done: float) -> None:
     cures = [search.cures for search in found.searches]
     for repair in repairs_of(found.question, cures, planner, solving, found.tried):
         found.repairs.append(repair)
-        solving.watch.progress("diagnosing", FIRST_REPAIR)
+        solving.watch.progress("diagnosing", done)
 
 
 def _find_nearest(found: Findings, planner: Planner, solving: Solving) -> None:

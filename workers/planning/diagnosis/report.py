@@ -32,7 +32,7 @@ def diagnosis_of(found: Findings, nearest: NearestSchedule | None, no_nearest: s
         repairs=_best_first(found.repairs),
         nearest_schedule=nearest,
         no_nearest_schedule=no_nearest,
-        cut_off=[CUT_OFF[name] for name in found.cut_off],
+        cut_off=[CUT_OFF[name] for name in found.cut_off] + _refused(found.refused),
         assumptions=assumptions(found.question.job),
         cautions=list(CAUTIONS),
     )
@@ -41,6 +41,11 @@ def diagnosis_of(found: Findings, nearest: NearestSchedule | None, no_nearest: s
 def nearest_schedule(schedule: Schedule, missing: Iterable[Shortfall]) -> NearestSchedule:
     """Mark a schedule as one that falls short, and list by what."""
     return NearestSchedule(**dict(schedule), shortfalls=list(missing))
+
+
+def _refused(count: int) -> list[str]:
+    """Own up to repairs that are not offered because the audit refused their plan."""
+    return [f"{count} repair(s) whose plan the audit refused: a fault of the planner"] if count else []
 
 
 def _summary(found: Findings) -> str:

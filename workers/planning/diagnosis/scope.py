@@ -25,6 +25,8 @@ from workers.planning.instance import Instance, instance_of
 from workers.planning.rows import CommitmentRow
 from workers.planning.store import Store, initial_energy
 
+UNLIMITED: dict[str, Any] = {"export_limit_mw": None, "import_limit_mw": None, "lot_mw": None}
+
 
 @dataclass(frozen=True)
 class Question:
@@ -58,13 +60,16 @@ class Question:
 
 @dataclass(frozen=True)
 class Scope:
-    """A job cut out of the request; `commitments` and `outages` are the numbers theirs have in the request."""
+    """A job cut out of the request; `commitments` and `outages` are the numbers theirs have in the request.
+
+    `meters` are the ids of those whose limits are in it; `fleet` is the fleet's.
+    """
 
     question: Question
     job: ScheduleJob
     commitments: tuple[int, ...]
     outages: tuple[int, ...]
-    has_fleet: bool
+    meters: tuple[str, ...]
 
     @cached_property
     def instance(self) -> Instance:
@@ -75,9 +80,8 @@ class Scope:
     def elements(self) -> list[Element]:
         """All elements of the scope, those first that are spared first."""
         fleet = _fleet_of(self.job)
-        meters = [site.id for site in fleet.sites] + (["fleet"] if self.has_fleet else [])
         plants = (element for asset in fleet.assets for element in self.question.of_plants.get(asset.id, ()))
-        limits = (element for meter in meters for element in self.question.of_meters.get(meter, ()))
+        limits = (element for meter in self.meters for element in self.question.of_meters.get(meter, ()))
         return in_order([*plants, *limits, *row_elements(self.instance.rows)])
 
     def instance_of(self, job: ScheduleJob) -> Instance:
@@ -188,7 +192,8 @@ def _units(job: ScheduleJob, instance: Instance, left_out: Collection[Element]) 
 def whole(question: Question) -> Scope:
     """Give the whole request as a scope."""
     job = question.job
-    return Scope(question, job, tuple(range(len(job.commitments))), tuple(range(len(job.outages))), has_fleet=True)
+    meters = (*(site.id for site in _fleet_of(job).sites), "fleet")
+    return Scope(question, job, tuple(range(len(job.commitments))), tuple(range(len(job.outages))), meters)
 
 
 def scope_of_part(question: Question, part: Instance) -> Scope:
@@ -221,7 +226,9 @@ def scope_of_site(question: Question, part: Instance, site: str) -> Scope:
 
 
 def _cut(question: Question, part: Instance, assets: set[str], sites: set[str]) -> Scope:
+    """Cut out assets; of the sites they keep, those that are no meter of the part are there for their sums alone."""
     job, fleet = question.job, _fleet_of(question.job)
+    meters = {meter.id for meter in part.meters} & sites
     kept = [
         asset if asset.site in sites else asset.model_copy(update={"site": None})
         for asset in fleet.assets
@@ -235,13 +242,15 @@ def _cut(question: Question, part: Instance, assets: set[str], sites: set[str]) 
             "fleet": fleet.model_copy(
                 update={
                     "assets": kept,
-                    "sites": [site for site in fleet.sites if site.id in sites],
-                    "export_limit_mw": None,
-                    "import_limit_mw": None,
-                    "lot_mw": None,
+                    "sites": [
+                        site if site.id in meters else site.model_copy(update=UNLIMITED)
+                        for site in fleet.sites
+                        if site.id in sites
+                    ],
+                    **UNLIMITED,
                 }
             ),
-            "limits": {meter: limits for meter, limits in job.limits.items() if meter in sites},
+            "limits": {meter: limits for meter, limits in job.limits.items() if meter in meters},
             "positions": {},
             "outages": [job.outages[number] for number in outages],
             "commitments": list(commitments.values()),
@@ -251,7 +260,7 @@ def _cut(question: Question, part: Instance, assets: set[str], sites: set[str]) 
             },
         }
     )
-    return Scope(question, cut, tuple(commitments), tuple(outages), has_fleet=False)
+    return Scope(question, cut, tuple(commitments), tuple(outages), tuple(sorted(meters)))
 
 
 def _commitments(

@@ -43,7 +43,7 @@ def _sentence(trouble: Trouble, conflict: Conflict, reached: Sequence[Reached]) 
 
 def _physics(alone: Instance) -> Iterator[str]:
     """Quote what no schedule can escape, for what is left when a conflict stands alone."""
-    yield from (text for row in alone.rows if (text := _energy(alone, row)))
+    yield from (text for row in alone.rows if row.price is None and (text := _energy(alone, row)))
     for unit in alone.units:
         if isinstance(unit, FlexibleLoadUnit):
             yield from (_draw(unit, need, alone.hours) for need in unit.needs)
