@@ -1,1 +1,1 @@
-"""The main job, shown: an invented co-operative, a day that can be planned, and one that cannot."""
+"""The main job, shown: an invented co-operative, a day that can be planned, one that cannot, and its cure."""

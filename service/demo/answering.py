@@ -2,6 +2,8 @@
 
 import json
 import re
+from collections.abc import Sequence
+from dataclasses import dataclass
 from time import monotonic
 from typing import Any
 
@@ -11,6 +13,7 @@ from service.demo.folder import Folder
 WAIT = "wait=30"
 LIVE = ("queued", "running", "cancelling")
 SECONDS_ABOVE_THE_TIME_LIMIT = 60.0
+Document = dict[str, Any]
 
 
 class NoAnswerError(Exception):
@@ -25,6 +28,14 @@ class NoAnswerError(Exception):
         return f"no answer to {self.asked}: {self.words.strip() or 'nothing was said'}"
 
 
+@dataclass(frozen=True)
+class Reply:
+    """The request as the service keeps it, to which pointers and patches refer, and its answer."""
+
+    request: Document
+    answer: Document
+
+
 class Answering:
     """Submits jobs one after the other; what is kept bears the job's label."""
 
@@ -32,27 +43,31 @@ class Answering:
         self._api = api
         self._folder = folder
 
-    def answer(self, job: dict[str, Any]) -> dict[str, Any]:
-        """Return the answer document to a job document: a schedule, a diagnosis, or that time ran out.
+    def answer(self, job: Document, patch: Sequence[Document] = ()) -> Reply:
+        """Return what the service says to a job document: a schedule, a diagnosis, or that time ran out.
 
-        Raises NoAnswerError where there is none.
+        `patch` is what has made the document from an earlier one; it is kept beside. Raises NoAnswerError.
         """
         record = self._ended(job)
         name = _name(str(record["label"]))
         links = record["links"]
-        self._kept(links["request"], f"{name}-request.json")
+        if patch:
+            self._folder.keep(f"{name}-patch.json", json.dumps(list(patch), indent=2).encode() + b"\n")
+        request = json.loads(self._kept(links["request"], f"{name}-request.json"))
         self._kept(links["self"], f"{name}-job.json")
         if links["schedule"] is not None:
             self._kept(links["schedule"], f"{name}-schedule.csv", "text/csv")
-            found = self._kept(links["schedule"], f"{name}-schedule.json")
+            found = json.loads(self._kept(links["schedule"], f"{name}-schedule.json"))
         elif links["diagnosis"] is not None:
-            found = self._kept(links["diagnosis"], f"{name}-diagnosis.json")
+            found = json.loads(self._kept(links["diagnosis"], f"{name}-diagnosis.json"))
+            if found.get("nearest_schedule") is not None:
+                nearest = f"{links['self']}/schedule?accept_shortfall=true"
+                self._kept(nearest, f"{name}-nearest-schedule-falls-short.csv", "text/csv")
         else:
             raise NoAnswerError(f"job {record['id']}", f"it is {record['state']}: {record['error']}")
-        document: dict[str, Any] = json.loads(found)
-        return document
+        return Reply(request, found)
 
-    def _ended(self, job: dict[str, Any]) -> dict[str, Any]:
+    def _ended(self, job: Document) -> Document:
         """Submit a job and give its record when it has ended."""
         record = self._asked(202, "POST", "/v1/jobs", job, Prefer=WAIT).document
         until = monotonic() + float(job["time_limit_seconds"]) + SECONDS_ABOVE_THE_TIME_LIMIT

@@ -2,17 +2,24 @@
 
 from collections.abc import Iterator
 from datetime import datetime
+from itertools import pairwise
 from math import fsum, isclose
+from typing import Any
 
 from schemas.commitments import HoursAtLeast
-from schemas.diagnosis import Diagnosis
+from schemas.diagnosis import Diagnosis, Repair
 from schemas.job import ScheduleJob
+from schemas.problems import InvalidRequest
+from schemas.reading import read_job
 from schemas.schedule import Schedule
 from service.demo.commitments_text import threshold_mw
+from service.demo.json_patch import PatchRefused, patched
 from service.demo.money_text import ledger, whole
 
 SAME_MONEY = 1e-6
 SAME_POWER_MW = 1e-6
+SAME_MARGIN = 0.005
+"""Half of the last digit that is printed: two solves of one request differ by round-off."""
 
 
 def shortcomings(job: ScheduleJob, schedule: Schedule) -> Iterator[str]:
@@ -72,12 +79,64 @@ def _unsettled(schedule: Schedule) -> Iterator[str]:
         yield f"the totals add up to {together}, the margin is {schedule.margin}"
 
 
-def shortcomings_of_refusal(job: ScheduleJob, diagnosis: Diagnosis) -> Iterator[str]:
-    """Say in what a diagnosis falls short of one a person can act on."""
+def shortcomings_of_refusal(job: ScheduleJob, request: dict[str, Any], diagnosis: Diagnosis) -> Iterator[str]:
+    """Say in what a diagnosis falls short of one a person can act on; `request` is what its patches refer to."""
     if not diagnosis.summary:
         yield "the diagnosis has no summary"
-    named = {member.pointer for conflict in diagnosis.conflicts for member in conflict.members}
-    if not any(f"/commitments/{place}" in named for place in range(len(job.commitments))):
-        yield "the diagnosis names no commitment"
     if not diagnosis.cautions:
         yield "the diagnosis carries no cautions"
+    if not diagnosis.complete:
+        yield f"the diagnosis is not complete: {', '.join(diagnosis.cut_off) or 'more conflicts may exist'}"
+    yield from _unexplained(job, diagnosis)
+    yield from _unrepaired(request, diagnosis.repairs)
+    nearest = diagnosis.nearest_schedule
+    if nearest is None:
+        yield f"there is no nearest schedule: {diagnosis.no_nearest_schedule}"
+    elif not nearest.shortfalls:
+        yield "the nearest schedule does not say what it misses"
+    elif not nearest.cautions:
+        yield "the nearest schedule carries no cautions"
+
+
+def _unexplained(job: ScheduleJob, diagnosis: Diagnosis) -> Iterator[str]:
+    """Look for a commitment among what cannot hold together, and for how far each one there can be met."""
+    for conflict in diagnosis.conflicts:
+        if not conflict.irreducible:
+            yield f"more is named than needed: {', '.join(member.pointer for member in conflict.members)}"
+    names = {f"/commitments/{place}": promise.id for place, promise in enumerate(job.commitments)}
+    members = [member for conflict in diagnosis.conflicts for member in conflict.members]
+    rows = {(names[member.pointer], member.asset, member.day) for member in members if member.pointer in names}
+    if not rows:
+        yield "the diagnosis names no commitment"
+    for name, asset, day in rows - {(row.commitment, row.asset, row.day) for row in diagnosis.attainable}:
+        yield f"how far {' '.join(filter(None, (name, asset, day)))} can be met is not said"
+
+
+def _unrepaired(request: dict[str, Any], repairs: list[Repair]) -> Iterator[str]:
+    """Try each patch on the request, and look at what is said of its margin."""
+    if not repairs:
+        yield "there is no way out"
+    for repair in repairs:
+        if not repair.verified:
+            yield f"{repair.text}: not verified"
+        if repair.margin > repair.margin_bound + SAME_MARGIN:
+            yield f"{repair.text}: the margin {repair.margin} lies above its bound {repair.margin_bound}"
+        try:
+            read_job(patched(request, repair.patch))
+        except (PatchRefused, InvalidRequest) as fault:
+            yield f"{repair.text}: its patch gives no job: {fault}"
+    for better, worse in pairwise(repairs):
+        if worse.margin > better.margin:
+            yield f"{worse.text}: stands behind what earns less"
+
+
+def shortcomings_of_cure(job: ScheduleJob, schedule: Schedule, repair: Repair) -> Iterator[str]:
+    """Say in what the cured day falls short of a good one, or of what the repair promised.
+
+    Both solved the same request: neither margin can lie above the other's bound.
+    """
+    yield from (f"the cured day: {shortcoming}" for shortcoming in shortcomings(job, schedule))
+    if schedule.margin > repair.margin_bound + SAME_MARGIN:
+        yield f"the cured day earns {schedule.margin}, more than was proven possible: {repair.margin_bound}"
+    if schedule.margin_bound is not None and repair.margin > schedule.margin_bound + SAME_MARGIN:
+        yield f"the cured day can earn {schedule.margin_bound} at most, and {repair.margin} was promised"

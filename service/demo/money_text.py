@@ -50,11 +50,25 @@ def money_text(schedule: Schedule) -> Iterator[str]:
     """Write the ledger; what is nothing everywhere is left out, a dot stands for nothing."""
     totals = whole(schedule)
     columns = [name for name in SIGNS if abs(totals[name]) >= HALF_A_CENT]
-    yield f"{schedule.currency:12}" + "".join(f"{_heading(name):>11}" for name in columns) + f"{'together':>12}"
+    yield _head(schedule.currency, columns)
     for part, amounts in ledger(schedule).items():
         if any(abs(amount) >= HALF_A_CENT for amount in amounts.values()):
             yield _line(part, amounts, columns)
     yield _line("all", totals, columns)
+
+
+def difference_text(before: Schedule, now: Schedule, names: tuple[str, str]) -> Iterator[str]:
+    """Write the totals of two schedules, and what the second brings more or less than the first."""
+    was, then = whole(before), whole(now)
+    more = {name: then[name] - was[name] for name in SIGNS}
+    columns = [name for name in SIGNS if max(abs(was[name]), abs(then[name])) >= HALF_A_CENT]
+    yield _head(now.currency, columns)
+    for name, amounts in zip((*names, "difference"), (was, then, more), strict=True):
+        yield _line(name, amounts, columns)
+
+
+def _head(currency: str, columns: list[str]) -> str:
+    return f"{currency:12}" + "".join(f"{_heading(name):>11}" for name in columns) + f"{'together':>12}"
 
 
 def _heading(name: str) -> str:

@@ -1,4 +1,4 @@
-"""The whole demo: a service of its own, two jobs over HTTP, and the answers left in a folder."""
+"""The whole demo: a service of its own, three jobs over HTTP, and the answers left in a folder."""
 
 import sys
 from datetime import datetime
@@ -29,7 +29,7 @@ def demo(stream: TextIO, out: Path | None, now: datetime) -> int:
             page.words("Starting a service for this demo alone: Redis, API, keeper and workers, on this machine ...")
             with own_service() as api:
                 page.words(
-                    f"It is ready at {api.url}. Two jobs go there over HTTP, the second when the first is shown."
+                    f"It is ready at {api.url}. Three jobs go there over HTTP, each when the one before is shown."
                 )
                 page.table([""])
                 status = run(page, Answering(api, folder).answer)

@@ -1,6 +1,6 @@
 """Power and stored energy of a schedule, for a person to read: one line an asset, one line a meter."""
 
-from collections.abc import Iterator
+from collections.abc import Collection, Iterator
 from math import inf
 
 from schemas.fleet import Site, Storage
@@ -9,16 +9,19 @@ from schemas.schedule import AssetSchedule, Schedule
 from service.demo import day_strip
 
 _PEAK_INTERVALS = 8
+SHOWN_MW = 5e-4
 
 
-def assets_text(job: ScheduleJob, schedule: Schedule) -> Iterator[str]:
-    """Write what each store does over the day, and what it holds before, during and after it."""
+def assets_text(job: ScheduleJob, schedule: Schedule, only: Collection[str] | None = None) -> Iterator[str]:
+    """Write what each store does over the day, and what it holds before, during and after it; `only`: of these."""
     hours = day_strip.hours_of(schedule.interval_starts)
     yield f"{'':10} {'limit, MW':^11}  {'hour of the day':<48} {'stored, MWh':>25}"
     ruler = day_strip.ruler(schedule.interval_starts)
     yield f"{'asset':10} {'in':>5} {'out':>5}  {ruler} {'start':>7}{'least':>6}{'most':>6}{'end':>6}"
     planned = {asset.id: asset for asset in schedule.assets}
     for asset in job.fleet.assets if job.fleet else ():
+        if only is not None and asset.id not in only:
+            continue
         power = planned[asset.id].power_mw
         if isinstance(asset, Storage):
             drawn = day_strip.strip(power, hours, asset.discharge_limit_mw, asset.charge_limit_mw)
@@ -27,6 +30,16 @@ def assets_text(job: ScheduleJob, schedule: Schedule) -> Iterator[str]:
         else:
             drawn = day_strip.strip(power, hours, inf, inf)
             yield f"{asset.id:10} {'-':>5} {'-':>5}  {drawn} {'load, up to':>13} {-min(power):5.2f} MW"
+
+
+def moved(before: Schedule, now: Schedule) -> list[str]:
+    """Return the assets whose set points differ in any interval by what a table with three decimals shows, MW."""
+    power_mw = {asset.id: asset.power_mw for asset in before.assets}
+    return [
+        asset.id
+        for asset in now.assets
+        if any(abs(mw - was) >= SHOWN_MW for mw, was in zip(asset.power_mw, power_mw[asset.id], strict=True))
+    ]
 
 
 def _stored(job: ScheduleJob, store: Storage, planned: AssetSchedule) -> str:

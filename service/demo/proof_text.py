@@ -1,6 +1,6 @@
 """What is proven of a schedule and how it came about, in words."""
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 
 from schemas.job import ScheduleJob
 from schemas.schedule import Assumption, Schedule
@@ -36,6 +36,6 @@ def _bound(job: ScheduleJob, schedule: Schedule) -> str:
     )
 
 
-def assumptions_text(assumptions: list[Assumption]) -> Iterator[str]:
+def assumptions_text(assumptions: Iterable[Assumption]) -> Iterator[str]:
     """Write what was taken as read where the request left something open."""
     yield from (f"- {assumption.pointer}: {assumption.text}" for assumption in assumptions)

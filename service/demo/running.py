@@ -1,30 +1,30 @@
 """Run the demo: ask, print for a person, and tell whether everything held."""
 
-from collections.abc import Callable
-from typing import Any
-
-from schemas.diagnosis import Diagnosis
-from schemas.job import ScheduleJob
-from schemas.reading import read_job
 from schemas.schedule import Schedule
-from service.demo import expectations, scenario
+from service.demo import expectations, scenario, tripped_day
 from service.demo.answering import NoAnswerError
 from service.demo.commitments_text import commitments_text, notes_text
 from service.demo.day_strip import LEGEND
-from service.demo.diagnosis_text import diagnosis_text, outages_text
+from service.demo.diagnosis_text import outages_text
 from service.demo.money_text import money_text
 from service.demo.page import Page
 from service.demo.power_text import assets_text, meters_text, peak_text, prices_text, standby_text
 from service.demo.proof_text import assumptions_text, proof_text
+from service.demo.question import Answer, Asked, ask
 
-Document = dict[str, Any]
-Answering = Callable[[Document], Document]
+PLANNED = ("optimal", "feasible", "violated")
 
 
-def run(page: Page, answer: Answering) -> int:
-    """Plan both days of the scenario and print them; return 0 only if everything held, 1 with the reasons otherwise."""
+def run(page: Page, answer: Answer) -> int:
+    """Plan both days of the scenario, cure the second, print it all; return 0 only if everything held, else 1.
+
+    What did not hold is said by name.
+    """
     try:
-        faults = [*_evening(page, answer), *_tripped(page, answer)]
+        first = ask(page, answer, scenario.evening_request(), "a day that can be planned")
+        schedule = Schedule.model_validate(first.reply.answer) if first.outcome in PLANNED else None
+        faults = _first_day(page, first, schedule)
+        faults += tripped_day.show(page, answer, schedule)
     except NoAnswerError as fault:
         faults = [str(fault)]
     page.title("everything held" if not faults else "NOT EVERYTHING HELD")
@@ -33,16 +33,16 @@ def run(page: Page, answer: Answering) -> int:
         return 1
     page.words(
         "The first day has a schedule: every binding commitment met, no violation, figures that add up, a bound on "
-        "what any other schedule could earn. The second day is proven impossible, and the answer says why."
+        "what any other schedule could earn. After the trip it is proven impossible; the answer says why, how far it "
+        "can be met and what would cure it; and the best cure, applied and sent again, gives what was promised of it."
     )
     return 0
 
 
-def _evening(page: Page, answer: Answering) -> list[str]:
-    job, document = _ask(page, answer, scenario.evening_request(), "a day that can be planned")
-    if document["outcome"] not in ("optimal", "feasible", "violated"):
-        return [f"the first day ended {document['outcome']}: {document.get('summary')}"]
-    schedule = Schedule.model_validate(document)
+def _first_day(page: Page, first: Asked, schedule: Schedule | None) -> list[str]:
+    job = first.job
+    if schedule is None:
+        return [f"the first day ended {first.outcome}: {first.reply.answer.get('summary')}"]
     page.words(*schedule.cautions)
     page.heading("Market")
     page.words(f"Invented prices ({schedule.price_basis}), {schedule.currency}/MWh:")
@@ -66,31 +66,3 @@ def _evening(page: Page, answer: Answering) -> list[str]:
     page.words(*assumptions_text(schedule.assumptions))
     page.table([""])
     return list(expectations.shortcomings(job, schedule))
-
-
-def _tripped(page: Page, answer: Answering) -> list[str]:
-    job, document = _ask(page, answer, scenario.tripped_request(), "the same day after a trip")
-    if document["outcome"] != "infeasible":
-        return [f"the second day ended {document['outcome']}, and should be proven infeasible"]
-    diagnosis = Diagnosis.model_validate(document)
-    page.words("Out of service, all else as before:", *outages_text(job))
-    page.heading("Why")
-    page.words(*diagnosis_text(diagnosis))
-    page.heading("Taken as read")
-    page.words(*assumptions_text(diagnosis.assumptions))
-    page.table([""])
-    page.words(*diagnosis.cautions)
-    page.table([""])
-    return list(expectations.shortcomings_of_refusal(job, diagnosis))
-
-
-def _ask(page: Page, answer: Answering, request: Document, what: str) -> tuple[ScheduleJob, Document]:
-    job = read_job(request)
-    if not isinstance(job, ScheduleJob) or job.window is None or job.fleet is None:
-        raise ValueError("the scenario asks for a schedule, with fleet and window inline")
-    page.title(f"{job.fleet.name}: {what}")
-    page.words(
-        f"{job.label}, {job.window.start:%A %Y-%m-%d}, {job.window.timezone} time, {job.window.intervals} intervals of "
-        f"{job.window.interval.total_seconds() / 60:g} minutes. An invented fleet."
-    )
-    return job, answer(request)

@@ -12,6 +12,7 @@ Document = dict[str, Any]
 INTERVALS = 96
 TIME_LIMIT_SECONDS = 30
 DAY = "2027-03-16"
+DAY_BEFORE = "2027-03-15"
 
 
 def evening_request() -> Document:
@@ -33,17 +34,25 @@ def evening_request() -> Document:
         },
         "targets": {"hb-b1": {"final_stored_mwh": 6.0, "final_value_per_mwh": 40.0}},
         "forecasts": {"cs-cooling": _cooling_mw(), "lw-crusher": _crusher_mw()},
-        "outages": [{"asset": "cs-b2", "kind": "planned", "from": _at("06:50"), "to": _at("09:00")}],
+        "outages": [
+            {"asset": "cs-b2", "kind": "planned", "from": _at("06:50"), "to": _at("09:00")},
+            {"asset": "lw-b1", "kind": "planned", "from": _at("11:00"), "to": _at("13:00")},
+        ],
         "commitments": commitments(),
         "time_limit_seconds": TIME_LIMIT_SECONDS,
     }
 
 
 def tripped_request() -> Document:
-    """Return the same day after a trip: `lw-b1` is out until 19:30, with its 8 h of the evening still due."""
+    """Return the same day after a trip: `lw-b1` went out last evening and is expected back at 09:00.
+
+    The two hours of work on it before noon were planned when it could fill in the night; its 8 h of the evening are
+    still due.
+    """
     request = evening_request()
     request["label"] = "day ahead, lw-b1 tripped"
-    request["outages"].append({"asset": "lw-b1", "kind": "forced", "from": _at("05:40"), "to": _at("19:30")})
+    tripped = {"asset": "lw-b1", "kind": "forced", "from": _at("21:40", DAY_BEFORE), "to": _at("09:00")}
+    request["outages"].append(tripped)
     return request
 
 
@@ -182,6 +191,6 @@ def _bell(hour: float, middle: float, width: float) -> float:
     return exp(-(((hour - middle) / width) ** 2) / 2)
 
 
-def _at(clock: str) -> str:
-    """Write a time of the day; Lisbon keeps UTC until the last Sunday of March."""
-    return f"{DAY}T{clock}:00+00:00"
+def _at(clock: str, day: str = DAY) -> str:
+    """Write a time of a day; Lisbon keeps UTC until the last Sunday of March."""
+    return f"{day}T{clock}:00+00:00"

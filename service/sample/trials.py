@@ -51,7 +51,7 @@ def trials() -> list[Trial]:
         Trial("a day that can be planned", "finished, optimal", _on_quay("sample-day-ahead", _promise(2, "17", "22"))),
         Trial(
             "a promise that cannot be kept",
-            "finished, infeasible: read its diagnosis",
+            "finished, infeasible: its diagnosis says why, how far, and what cures it",
             {
                 "label": "sample: too much promised",
                 "fleet_id": "sample-kiln",

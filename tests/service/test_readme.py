@@ -151,7 +151,7 @@ def test_the_schedule_keeps_the_commitment_and_carries_its_cautions(calls: list[
 
 
 def test_the_request_that_is_kept_is_whole(calls: list[Call]) -> None:
-    request = only(calls, "/request").document
+    request = next(call for call in calls if "/request" in call.line).document
     assert request["fleet"]["assets"][0]["id"] == "quay-b1"
     assert request["window"]["price_per_mwh"] == [40.0, 75.0, 90.0, 60.0]
     assert [job["state"] for job in only(calls, "state=finished").document["jobs"]] == ["finished"]
@@ -164,6 +164,28 @@ def test_the_diagnosis_says_why_and_the_schedule_points_to_it(calls: list[Call])
     (missing,) = [call for call in calls if call.named == (404,)]
     assert missing.document["type"] == "/problems/no-schedule"
     assert missing.document["diagnosis"].endswith("/diagnosis")
+
+
+def test_the_members_of_a_diagnosis_that_are_explained_are_those_it_has(calls: list[Call]) -> None:
+    rows = re.findall(r"^\| (`[^|]+) \|", section().split("has a diagnosis:")[1].split("```")[0], re.MULTILINE)
+    explained = {name for row in rows for name in re.findall(r"`(\w+)`", row)}
+    always = {"job_id", "outcome", "assumptions", "cautions", "no_nearest_schedule", "commitment_costs"}
+    assert explained == only(calls, "/diagnosis").document.keys() - always
+
+
+def test_the_nearest_schedule_falls_short_and_says_so(calls: list[Call]) -> None:
+    nearest = only(calls, "accept_shortfall").document
+    assert nearest["cautions"][0].startswith("This schedule does not meet the request")
+    assert nearest["shortfalls"]
+
+
+def test_the_first_repair_sent_again_earns_what_was_said_of_it(calls: list[Call]) -> None:
+    repair = only(calls, "/diagnosis").document["repairs"][0]
+    sent = calls.index(only(calls, "with_repair"))
+    job, schedule = calls[sent].document, calls[sent + 1].document
+    assert job["outcome"] == "optimal"
+    assert repair["margin"] - 0.01 <= schedule["margin"] <= repair["margin_bound"] + 0.01
+    assert all(row["met"] for row in schedule["commitments"])
 
 
 def test_a_job_that_is_stopped_is_cancelled(calls: list[Call]) -> None:

@@ -12,11 +12,14 @@ from typing import Any
 
 import pytest
 
-from service.demo import scenario
+from service.demo.answering import Reply
 
 PATIENCE_SECONDS = 240
 Document = dict[str, Any]
-Answers = dict[str, Document]
+Replies = dict[str, Reply]
+EVENING = "day-ahead"
+TRIPPED = "day-ahead-lw-b1-tripped"
+CURED = "day-ahead-lw-b1-tripped-cured"
 
 
 @dataclass(frozen=True)
@@ -82,9 +85,10 @@ def printed(demo: Shown) -> str:
 
 
 @pytest.fixture(scope="session")
-def answers(demo: Shown) -> Answers:
-    """Give the service's answers to the demo's two questions, by the label of the question."""
+def replies(demo: Shown) -> Replies:
+    """Give what the service said to the demo's three questions, by the stem of the files that it left."""
+    answers = {EVENING: "schedule", TRIPPED: "diagnosis", CURED: "schedule"}
     return {
-        scenario.evening_request()["label"]: demo.left("day-ahead-schedule.json"),
-        scenario.tripped_request()["label"]: demo.left("day-ahead-lw-b1-tripped-diagnosis.json"),
+        stem: Reply(demo.left(f"{stem}-request.json"), demo.left(f"{stem}-{what}.json"))
+        for stem, what in answers.items()
     }

@@ -8,7 +8,7 @@ from typing import Any
 import pytest
 
 from service.calling import Answered, Api, NotReached
-from service.demo.answering import Answering, NoAnswerError
+from service.demo.answering import Answering, NoAnswerError, Reply
 from service.demo.folder import CannotKeep, Folder
 
 NOW = datetime(2027, 3, 15, 10, 0, tzinfo=UTC)
@@ -64,7 +64,7 @@ def test_it_asks_until_the_job_has_ended_and_keeps_every_document(folder: Folder
         Answered(200, {}, b"interval_start_utc\r\n"),
         answered(200, {"outcome": "optimal"}),
     )
-    assert Answering(api, folder).answer(JOB) == {"outcome": "optimal"}
+    assert Answering(api, folder).answer(JOB) == Reply({"a": "request"}, {"outcome": "optimal"})
     assert [(method, path) for method, path, _ in api.asked[:3]] == [("POST", "/v1/jobs"), ("GET", HOME), ("GET", HOME)]
     assert all(headers == {"Prefer": "wait=30"} for _, _, headers in api.asked[:3])
     assert api.sent == [JOB, None, None, None, None, None, None]
@@ -72,6 +72,29 @@ def test_it_asks_until_the_job_has_ended_and_keeps_every_document(folder: Folder
     kept = [f"{stem}-request.json", f"{stem}-job.json", f"{stem}-schedule.csv", f"{stem}-schedule.json"]
     assert folder.names == ["READ-FIRST.txt", *kept]
     assert (folder.path / kept[2]).read_bytes() == b"interval_start_utc\r\n"
+
+
+def test_of_a_job_that_cannot_be_met_the_nearest_schedule_is_kept_where_there_is_one(folder: Folder) -> None:
+    for nearest in (None, {"margin": 1.0}):
+        ended = record("finished", diagnosis=f"{HOME}/diagnosis")
+        diagnosis = {"outcome": "infeasible", "nearest_schedule": nearest}
+        api = Scripted(
+            *(answered(202, ended), answered(200, {}), answered(200, ended), answered(200, diagnosis)),
+            Answered(200, {}, b"interval_start_utc\r\n"),
+        )
+        assert Answering(api, folder).answer(JOB).answer == diagnosis
+        last = f"{HOME}/diagnosis" if nearest is None else f"{HOME}/schedule?accept_shortfall=true"
+        assert api.asked[-1][1] == last
+        assert ("day-ahead-b-1-nearest-schedule-falls-short.csv" in folder.names) is (nearest is not None)
+
+
+def test_the_patch_that_made_a_job_is_kept_beside_it(folder: Folder) -> None:
+    ended = record("finished", schedule=f"{HOME}/schedule")
+    api = Scripted(answered(202, ended), *(answered(200, {}) for _ in range(4)))
+    patch = [{"op": "remove", "path": "/outages/0"}]
+    Answering(api, folder).answer(JOB, patch)
+    assert json.loads((folder.path / "day-ahead-b-1-patch.json").read_bytes()) == patch
+    assert api.sent[0] == JOB
 
 
 def test_a_job_that_failed_is_no_answer_and_its_reason_is_told(folder: Folder) -> None:

@@ -1,6 +1,7 @@
 """The demo as a whole: what it leaves behind, and that nothing else is left, however it ends."""
 
 import csv
+import json
 import os
 import signal
 import subprocess
@@ -12,13 +13,14 @@ from pathlib import Path
 from threading import Event
 from time import monotonic
 
+import jsonpatch
 import pytest
 
 from schemas.cautions import CAUTIONS
 from service.demo import over_http
 from service.demo.own_service import ServiceFault, own_service
 from tests.faults.deployment import is_gone
-from tests.service.demo.conftest import PATIENCE_SECONDS, Shown, descendants
+from tests.service.demo.conftest import CURED, EVENING, PATIENCE_SECONDS, TRIPPED, Shown, descendants
 
 WHOLE_FAMILY = 6
 """The service, its Redis, its API, its keeper and two workers."""
@@ -32,10 +34,9 @@ def until(is_so: Callable[[], bool], what: str) -> None:
 
 
 def test_it_leaves_what_the_service_answered(demo: Shown) -> None:
-    names = [
-        f"{day}-{what}" for day in ("day-ahead", "day-ahead-lw-b1-tripped") for what in ("request.json", "job.json")
-    ]
-    names += ["day-ahead-schedule.json", "day-ahead-schedule.csv", "day-ahead-lw-b1-tripped-diagnosis.json"]
+    names = [f"{day}-{what}.json" for day in (EVENING, TRIPPED, CURED) for what in ("request", "job")]
+    names += [f"{day}-schedule.{form}" for day in (EVENING, CURED) for form in ("json", "csv")]
+    names += [f"{TRIPPED}-diagnosis.json", f"{TRIPPED}-nearest-schedule-falls-short.csv", f"{CURED}-patch.json"]
     assert {file.name for file in demo.folder.iterdir()} == {*names, "READ-FIRST.txt"}
     words = " ".join(demo.printed.split())
     assert all(f"- {name}" in words for name in names)
@@ -43,18 +44,34 @@ def test_it_leaves_what_the_service_answered(demo: Shown) -> None:
     assert (demo.folder / "READ-FIRST.txt").read_text(encoding="utf-8").split("\n")[:2] == list(CAUTIONS)
 
 
-def test_table_schedule_and_job_tell_the_same(demo: Shown) -> None:
-    schedule, job = demo.left("day-ahead-schedule.json"), demo.left("day-ahead-job.json")
+@pytest.mark.parametrize("day", [EVENING, CURED])
+def test_table_schedule_and_job_tell_the_same(demo: Shown, day: str) -> None:
+    schedule, job = demo.left(f"{day}-schedule.json"), demo.left(f"{day}-job.json")
     assert schedule["job_id"] == job["id"]
     assert (job["state"], job["outcome"]) == ("finished", schedule["outcome"])
-    rows = list(csv.DictReader(StringIO((demo.folder / "day-ahead-schedule.csv").read_text(encoding="utf-8"))))
+    rows = list(csv.DictReader(StringIO((demo.folder / f"{day}-schedule.csv").read_text(encoding="utf-8"))))
     for asset in schedule["assets"]:
+        assert [float(row["power_mw"]) for row in rows if row["asset"] == asset["id"]] == asset["power_mw"]
+
+
+def test_the_cured_request_is_the_refused_one_with_the_patch_that_it_leaves_applied(demo: Shown) -> None:
+    refused, cured = demo.left(f"{TRIPPED}-request.json"), demo.left(f"{CURED}-request.json")
+    patch = json.loads((demo.folder / f"{CURED}-patch.json").read_text(encoding="utf-8"))
+    assert patch == demo.left(f"{TRIPPED}-diagnosis.json")["repairs"][0]["patch"]
+    assert jsonpatch.apply_patch(refused, patch) | {"label": cured["label"]} == cured
+
+
+def test_the_table_that_falls_short_is_the_nearest_schedule_of_the_diagnosis(demo: Shown) -> None:
+    nearest = demo.left(f"{TRIPPED}-diagnosis.json")["nearest_schedule"]
+    table = (demo.folder / f"{TRIPPED}-nearest-schedule-falls-short.csv").read_text(encoding="utf-8")
+    rows = list(csv.DictReader(StringIO(table)))
+    for asset in nearest["assets"]:
         assert [float(row["power_mw"]) for row in rows if row["asset"] == asset["id"]] == asset["power_mw"]
 
 
 def test_the_request_it_leaves_is_one_that_can_be_planned_again(demo: Shown) -> None:
     done = subprocess.run(
-        [sys.executable, "-I", "-m", "service", "plan", str(demo.folder / "day-ahead-lw-b1-tripped-request.json")],
+        [sys.executable, "-I", "-m", "service", "plan", str(demo.folder / f"{TRIPPED}-request.json")],
         capture_output=True,
         timeout=PATIENCE_SECONDS,
         check=False,
