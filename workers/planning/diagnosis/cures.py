@@ -78,7 +78,7 @@ class CureSearch:
                 found = True
                 yield cure
         if not found:
-            yield from self._combined(levers)
+            yield from self._combined(self._levers())
 
     def _levers(self) -> list[Lever]:
         """List the levers of all that is named, and make sure that all of them together would do.
@@ -107,8 +107,14 @@ class CureSearch:
         return tuple(Move(lever, step) for lever, step in steps.items() if step > 0)
 
     def _combined(self, levers: list[Lever]) -> Iterator[Cure]:
-        """Cure by several levers that together touch every conflict; conflicts that show up on the way are added."""
+        """Cure by several levers that together touch every conflict; conflicts that show up on the way are added.
+
+        First by levers that each touch most of what is left, however many it takes; then by few.
+        """
         found: list[frozenset[str]] = []
+        if (chosen := self._touching_most(levers)) and (cure := self._least(chosen)):
+            found.append(frozenset(move.lever.pointer for move in cure))
+            yield cure
         for size in range(2, MOST_LEVERS_TOGETHER + 1):
             for chosen in combinations(levers, size):
                 names = frozenset(lever.pointer for lever in chosen)
@@ -125,6 +131,21 @@ class CureSearch:
                         return
             if found:
                 return
+
+    def _touching_most(self, levers: list[Lever]) -> tuple[Lever, ...]:
+        """Choose levers that together would do: each time the one that touches most of the conflicts left."""
+        chosen: list[Lever] = []
+        while levers:
+            conflicts = self._trouble.conflicts
+            left = [c for c in conflicts if not any(lever.covers & c for lever in chosen)]
+            if left:
+                best = max(levers, key=lambda lever: sum(bool(lever.covers & conflict) for conflict in left))
+                if not any(best.covers & conflict for conflict in left):
+                    return ()
+                chosen.append(best)
+            elif self._would_do(frozenset[Element]().union(*(lever.covers for lever in chosen))):
+                return tuple(chosen)
+        return ()
 
     def _would_do(self, eased: frozenset[Element]) -> bool:
         """Tell whether leaving out all that is eased would cure; what still conflicts is taken note of."""
