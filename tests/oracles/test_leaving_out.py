@@ -13,6 +13,7 @@ from schemas.reading import read_job
 from tests.oracles.conflicts_by_force import always_relaxes, conflicts_by_force
 from tests.oracles.elements import Element, elements, kind_of, out_of_touch
 from tests.oracles.formulation import solve
+from tests.oracles.formulation_program import Program, Solution
 from tests.oracles.leaving_out import amount_due, is_possible_alone, is_possible_without, most_of
 from tests.oracles.plain_jobs import at, generator, job, owed, product, store
 from tests.oracles.random_infeasible import AIMS, a_conflict, infeasible_request
@@ -64,7 +65,7 @@ def test_the_reference_example_is_cured_as_it_says() -> None:
 
 
 def test_energy_at_the_start_is_free_within_the_range_of_the_store() -> None:
-    limits = {"min_stored_mwh": 0.4, "max_stored_mwh": 1.6}
+    limits: dict[str, Any] = {"min_stored_mwh": 0.4, "max_stored_mwh": 1.6}
     for power_mw, possible in ((1.2, True), (1.21, False)):
         request = job([10.0], store(discharge_limit_mw=2.0, **limits), stored=0.4, commitments=[firm(0, power_mw, 1)])
         assert is_possible_without(request, [STORED]) is possible
@@ -191,7 +192,7 @@ def test_the_most_of_a_row_is_none_where_the_rest_cannot_hold() -> None:
     ("commitment", "most"),
     [
         (owed("energy_at_least", energy_mwh=5.0), 1.5),
-        (owed("energy_at_least", energy_mwh=0.5), 1.5),
+        (owed("energy_at_least", energy_mwh=0.5), 0.5),
         (owed("firm_delivery", power_mw=[1.0, 1.0, 1.0]), 1.5),
         (owed("firm_delivery", power_mw=[1.0, 1.0, 1.0], excused=[{"from": at(1), "to": at(3)}]), 1.0),
         (owed("reserve_holding", product="up", power_mw=4.0), 3.0),
@@ -212,6 +213,16 @@ def test_the_least_of_an_at_most_is_what_the_rest_demands() -> None:
     assert most_of(request, row(0), [row(1)]) == pytest.approx(2.0)
     assert most_of(request, row(1), [row(0)]) == pytest.approx(1.0)
     assert most_of(request, row(1), []) is None
+
+
+def test_bisecting_finds_what_optimising_finds(monkeypatch: pytest.MonkeyPatch) -> None:
+    asked = owed("hours_at_least", threshold={"mw": 0.5}, hours=2)
+    request = job([10.0] * 5, store(), stored=1.2, commitments=[asked, owed("energy_at_least", id="e", energy_mwh=9.0)])
+    before = [most_of(request, row(0), [row(1)]), most_of(request, row(1), [row(0)]), most_of(request, row(0), [])]
+    assert before == [pytest.approx(4.0), pytest.approx(3.0), None]
+    monkeypatch.setattr(Program, "solve", lambda *_: Solution(4, None, None, None))
+    after = [most_of(request, row(0), [row(1)]), most_of(request, row(1), [row(0)]), most_of(request, row(0), [])]
+    assert after == [pytest.approx(4.0, abs=2e-3), pytest.approx(3.0, abs=2e-3), None]
 
 
 def test_the_amount_due_of_a_row_leaves_out_what_is_excused() -> None:

@@ -71,7 +71,11 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
     reached: list[float] = []
     for sets in product(*choices):
         left_out = [element for element in dict.fromkeys(chain.from_iterable(sets)) if element not in elsewhere]
-        most = most_of(document, row, [*left_out, *elsewhere])
+        try:
+            most = most_of(document, row, [*left_out, *elsewhere])
+        except RuntimeError as unsettled:
+            print(f"{what}: not judged, {unsettled}")
+            return
         if most is None:
             continue
         reached.append(most)
@@ -87,15 +91,10 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
 
 
 def _says(commitment: Document, figure: float, due: float, most: float) -> bool:
-    """Tell whether a figure is the oracle's, or what is due where that can be had.
-
-    Only hours owed are counted to the last one that can be had.
-    """
+    """Tell whether a figure is the oracle's; of an `*_at_most` that can be kept, what is allowed will do, too."""
     close = ROUND_OFF if "hours" in commitment else STEP
-    if abs(figure - most) <= close:
-        return True
-    is_met = most <= due if commitment["kind"].endswith("at_most") else most >= due
-    return commitment["kind"] != "hours_at_least" and is_met and abs(figure - due) <= close
+    is_met = commitment["kind"].endswith("at_most") and most <= due
+    return abs(figure - most) <= close or (is_met and abs(figure - due) <= close)
 
 
 def _read_as(pointer: str, rest: list[Element]) -> list[tuple[Element, ...]]:
