@@ -123,8 +123,13 @@ class Assembled:
         return replace(self, matrix=replace(self.matrix, integer=integer))
 
 
-def assemble(instance: Instance, apart: list[Booleans], tangents: Sequence[Tangents] = ()) -> Assembled:
-    """Write every rule of an instance into one model; `apart` says per store where modes are exclusive by a binary."""
+def assemble(
+    instance: Instance, apart: list[Booleans], tangents: Sequence[Tangents] = (), *, by_pyomo: bool = True
+) -> Assembled:
+    """Write every rule of an instance into one model; `apart` says per store where modes are exclusive by a binary.
+
+    The dozens of small questions of a diagnosis skip Pyomo, which takes a third of their time.
+    """
     model = Model()
     columns = FleetColumns(instance, tuple(unit_columns(model, unit, instance.products) for unit in instance.units))
     modes = tuple(_add_store(model, instance, store, where) for store, where in zip(columns.stores, apart, strict=True))
@@ -139,7 +144,20 @@ def assemble(instance: Instance, apart: list[Booleans], tangents: Sequence[Tange
     settlement.add(model, columns)
     for row in instance.rows:
         _add_row(model, columns, row)
-    return Assembled(columns, modes, highs.matrix_of(model.as_pyomo()))
+    return Assembled(columns, modes, highs.matrix_of(model.as_pyomo()) if by_pyomo else _matrix(model))
+
+
+def _matrix(model: Model) -> highs.Matrix:
+    return highs.Matrix(
+        money=model.money,
+        constant=model.constant,
+        lower=model.lower,
+        upper=model.upper,
+        integer=model.integer,
+        rows=model.matrix(),
+        row_lower=model.row_lower,
+        row_upper=model.row_upper,
+    )
 
 
 def _add_store(model: Model, instance: Instance, store: StoreColumns, apart: Booleans) -> Modes:

@@ -85,6 +85,7 @@ class _Search:
     watch: Watch
     ends: float
     by: str = "highs"
+    by_pyomo: bool = True
     tangents: list[Tangents] = field(default_factory=list)
     margin: float | None = None
     plans: tuple[UnitPlan, ...] | None = None
@@ -99,7 +100,7 @@ class _Search:
 
     def assemble(self) -> Assembled:
         began = perf_counter()
-        assembled = assemble(self.instance, self.apart, self.tangents)
+        assembled = assemble(self.instance, self.apart, self.tangents, by_pyomo=self.by_pyomo)
         self.build_seconds += perf_counter() - began
         return assembled
 
@@ -277,13 +278,14 @@ def solve_jointly(
     seconds: float,
     everywhere: bool = False,
     earlier: tuple[UnitPlan, ...] | None = None,
+    by_pyomo: bool = True,
 ) -> Solution:
     """Plan all units of an instance in one model; `everywhere` puts in every binary from the start.
 
     `earlier` is what the units did in an earlier schedule; one that does not fit the instance is passed over.
     """
     apart = [where | np.bool_(everywhere) for where in where_mixing_may_pay(instance)]
-    search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds)
+    search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds, by_pyomo=by_pyomo)
     _search_jointly(search, earlier)
     if search.plans is None and search.last is not Stopped.INFEASIBLE:
         _start_from(search, search.assemble(), earlier)

@@ -76,10 +76,42 @@ class Model:
         self._row_upper.append(np.broadcast_to(np.asarray(upper, dtype=float), count))
         self.row_count += count
 
+    @property
+    def lower(self) -> Floats:
+        """Least value of each column."""
+        return _joined(self._lower)
+
+    @property
+    def upper(self) -> Floats:
+        """Largest value of each column."""
+        return _joined(self._upper)
+
+    @property
+    def integer(self) -> NDArray[np.bool_]:
+        """Columns that are whole numbers."""
+        return np.concatenate(self._integer) if self._integer else np.zeros(0, dtype=bool)
+
+    @property
+    def row_lower(self) -> Floats:
+        """Least value of each row."""
+        return _joined(self._row_lower)
+
+    @property
+    def row_upper(self) -> Floats:
+        """Largest value of each row."""
+        return _joined(self._row_upper)
+
+    @property
+    def money(self) -> Floats:
+        """What one unit of each column earns."""
+        money = np.zeros(self.column_count)
+        for columns, amounts in self._money:
+            np.add.at(money, columns, amounts)
+        return money
+
     def as_pyomo(self) -> Any:
         """Wrap the model in a Pyomo kernel block with `variables`, `rows` (if any) and `margin`."""
-        lower, upper = _joined(self._lower), _joined(self._upper)
-        integer = np.concatenate(self._integer) if self._integer else np.zeros(0, dtype=bool)
+        lower, upper, integer, money = self.lower, self.upper, self.integer, self.money
         block = pmo.block()
         variables = [
             pmo.variable(lb=low, ub=high, domain_type=pmo.IntegerSet if whole else pmo.RealSet)
@@ -87,12 +119,7 @@ class Model:
         ]
         block.variables = pmo.variable_tuple(variables)
         if self.row_count:
-            block.rows = pmo.matrix_constraint(
-                self.matrix(), lb=_joined(self._row_lower), ub=_joined(self._row_upper), x=block.variables
-            )
-        money = np.zeros(self.column_count)
-        for columns, amounts in self._money:
-            np.add.at(money, columns, amounts)
+            block.rows = pmo.matrix_constraint(self.matrix(), lb=self.row_lower, ub=self.row_upper, x=block.variables)
         earning = np.flatnonzero(money)
         terms = pmo.expression(sum_of(money[earning].tolist(), [variables[k] for k in earning], self.constant))
         block.margin = pmo.objective(terms, sense=pmo.maximize)

@@ -57,7 +57,7 @@ class Planner:
         known = self._known.get(whose)
         if known is not None and is_same(known[0], part):
             return known[1]
-        solution = solving.solve(part, max(LEAST_SECONDS, SHARE * solving.seconds_left), earlier)
+        solution = solving.solve(part, max(LEAST_SECONDS, SHARE * solving.seconds_left), earlier, is_plan=True)
         if solution.plans is not None:
             self._known[whose] = (part, solution)
         return solution

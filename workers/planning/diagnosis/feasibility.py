@@ -44,16 +44,25 @@ class Solving:
         seconds = min(max(self.seconds_left, 0.0) * share, most)
         return replace(self, ends=self.limits.clock() + seconds, solves=0)
 
-    def solve(self, instance: Instance, most: float = inf, earlier: tuple[UnitPlan, ...] | None = None) -> Solution:
+    def solve(
+        self,
+        instance: Instance,
+        most: float = inf,
+        earlier: tuple[UnitPlan, ...] | None = None,
+        *,
+        is_plan: bool = False,
+    ) -> Solution:
         """Solve an instance, from `earlier` plans where given, with the time left or `most` seconds of it.
 
-        Raises CutShort where there is no time left.
+        A plan to be shown goes through Pyomo like any other. Raises CutShort where there is no time left.
         """
         if self.seconds_left <= 0 or self.watch.is_stop_asked():
             raise CutShort("no time left")
         self.solves += 1
         seconds = min(self.seconds_left, most)
-        return solve_jointly(instance, self.limits, self.watch, seed=self.seed, seconds=seconds, earlier=earlier)
+        return solve_jointly(
+            instance, self.limits, self.watch, seed=self.seed, seconds=seconds, earlier=earlier, by_pyomo=is_plan
+        )
 
     @staticmethod
     def cut_short() -> CutShort:

@@ -51,7 +51,7 @@ def apply_patch(document: dict[str, Any], operations: list[Operation]) -> dict[s
         if operation["op"] == "remove":
             del here[last]
         else:
-            here[last] = operation["value"]
+            here[last] = deepcopy(operation["value"])
     return changed
 
 

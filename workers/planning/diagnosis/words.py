@@ -2,6 +2,8 @@
 
 from collections.abc import Iterable, Iterator, Sequence
 
+import numpy as np
+
 from workers.planning.diagnosis.attainable import Reached, is_ceiling, unit_of
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.localise import Conflict, Trouble
@@ -67,11 +69,17 @@ def _energy(instance: Instance, row: CommitmentRow) -> str | None:
     only = instance.units[row.units[0]] if row.asset is not None and row.units else None
     if not isinstance(row, HoursRow) or not isinstance(only, Store) or row.sign < 0:
         return None
-    due = whole_intervals(row.due_hours, instance.hours) * instance.hours
+    hours = instance.hours
+    due = whole_intervals(row.due_hours, hours) * hours
     needed = due * row.threshold_mw / only.discharge_efficiency
+    able = only.can_charge | only.can_discharge
+    beside = max(0, int(able.sum()) - whole_intervals(row.due_hours, hours))
+    charged = float(np.sort(only.most_in_mw)[::-1][:beside].sum()) * hours * only.charge_efficiency
+    start = f"{only.initial_mwh:.4g} MWh" if not only.is_initial_free else f"up to {only.most_initial_mwh:.4g} MWh"
     return (
-        f"{due:g} h at {row.threshold_mw:g} MW need {needed:.4g} MWh from {only.id}, which starts with "
-        f"{only.initial_mwh:.4g} MWh and holds at most {only.ceiling_mwh.max():.4g} MWh."
+        f"{due:g} h at {row.threshold_mw:g} MW need {needed:.4g} MWh from {only.id}: it starts with {start}, holds at most "
+        f"{only.ceiling_mwh.max():.4g} MWh, and in service for {able.sum() * hours:g} h it can charge for "
+        f"{beside * hours:g} h beside, at most {charged:.4g} MWh."
     )
 
 
