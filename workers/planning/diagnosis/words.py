@@ -77,8 +77,8 @@ def _energy(instance: Instance, row: CommitmentRow) -> str | None:
     charged = float(np.sort(only.most_in_mw)[::-1][:beside].sum()) * hours * only.charge_efficiency
     start = f"{only.initial_mwh:.4g} MWh" if not only.is_initial_free else f"up to {only.most_initial_mwh:.4g} MWh"
     return (
-        f"{due:g} h at {row.threshold_mw:g} MW need {needed:.4g} MWh from {only.id}: it starts with {start}, holds at most "
-        f"{only.ceiling_mwh.max():.4g} MWh, and in service for {able.sum() * hours:g} h it can charge for "
+        f"{due:g} h at {row.threshold_mw:g} MW need {needed:.4g} MWh from {only.id}: it starts with {start}, holds at "
+        f"most {only.ceiling_mwh.max():.4g} MWh, and in service for {able.sum() * hours:g} h it can charge for "
         f"{beside * hours:g} h beside, at most {charged:.4g} MWh."
     )
 
