@@ -1,14 +1,12 @@
 """From an audited replay to the documents of the contract."""
 
 import hashlib
-from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import cache
 from importlib.metadata import version
 
 from schemas.assumptions import assumptions
 from schemas.cautions import CAUTIONS
-from schemas.diagnosis import Conflict, Diagnosis, Member
 from schemas.job import CheckJob, CommitmentCostsJob, Job, ScheduleJob
 from schemas.reading import canonical
 from schemas.schedule import Outcome, Provenance, Schedule, Undecided
@@ -95,20 +93,6 @@ def relative_gap(replayed: Replay, bound: float) -> float:
     """Measure a gap as the contract does: against the margin, 1 % of the turnover, or one unit of the currency."""
     turnover = abs(replayed.totals.sales) + abs(replayed.totals.purchases)
     return max(0.0, bound - replayed.margin) / max(abs(replayed.margin), 0.01 * turnover, 1.0)
-
-
-def diagnosis(job: PlannedJob, summary: str, conflicts: Iterable[Iterable[tuple[str, str]]]) -> Diagnosis:
-    """Say that a job cannot be met, and by what; conflicts are pointers with words, not yet cut to the irreducible."""
-    return Diagnosis(
-        complete=False,
-        summary=summary,
-        conflicts=[
-            Conflict(irreducible=False, members=[Member(pointer=place, text=text) for place, text in members])
-            for members in conflicts
-        ],
-        assumptions=assumptions(job),
-        cautions=list(CAUTIONS),
-    )
 
 
 def undecided(job: PlannedJob, summary: str, bound: float | None, attempt: Schedule | None) -> Undecided:

@@ -31,7 +31,6 @@ class Meter:
     """
 
     id: str
-    pointer: str
     units: tuple[int, ...]
     load_mw: Floats
     lot_mw: float | None
@@ -180,18 +179,14 @@ def _meters(
     job: OneWindow, fleet: Fleet, numbers: dict[str, int], drawn: Callable[[Iterable[str]], Floats], count: int
 ) -> Iterator[Meter]:
     members: dict[str, list[str]] = {site.id: [] for site in fleet.sites}
-    pointers = {site.id: f"/fleet/sites/{k}" for k, site in enumerate(fleet.sites)}
-    for k, asset in enumerate(fleet.assets):
+    for asset in fleet.assets:
         members.setdefault(asset.site or asset.id, []).append(asset.id)
-        if asset.site is None:
-            pointers[asset.id] = f"/fleet/assets/{k}"
     sites = {site.id: site for site in fleet.sites}
     for meter, assets in members.items():
         site = sites.get(meter)
         counted = job.counted_before.sites.get(meter)
         yield Meter(
             id=meter,
-            pointer=pointers[meter],
             units=tuple(numbers[asset] for asset in assets if asset in numbers),
             load_mw=drawn(assets),
             lot_mw=site.lot_mw if site else None,
@@ -222,7 +217,6 @@ def _fleet_meter(job: OneWindow, fleet: Fleet, meters: tuple[Meter, ...], count:
     load: Floats = sum((meter.load_mw for meter in meters), start=np.zeros(count))
     return Meter(
         id="fleet",
-        pointer="/fleet",
         units=tuple(unit for meter in meters for unit in meter.units),
         load_mw=load,
         lot_mw=fleet.lot_mw,

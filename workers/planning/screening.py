@@ -5,8 +5,7 @@ can flow, how many intervals there are. The sentences are those of the diagnosis
 when.
 """
 
-from collections.abc import Iterable, Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator
 from datetime import datetime
 
 import numpy as np
@@ -19,25 +18,19 @@ SLACK_MWH = 1e-6
 SLACK_MW = 1e-6
 
 
-@dataclass(frozen=True)
-class Finding:
-    """Elements that cannot hold together, as pointers with words, and the sentence that says why."""
-
-    members: tuple[tuple[str, str], ...]
-    sentence: str
+def screen(instance: Instance) -> list[str]:
+    """Say what cannot be, a sentence each; an empty list proves nothing."""
+    return list(_refusals(instance))
 
 
-def screen(instance: Instance) -> list[Finding]:
-    """List what cannot be; an empty list proves nothing."""
-    findings: list[Finding] = []
+def _refusals(instance: Instance) -> Iterator[str]:
     for store in instance.stores:
-        findings += _stored_energy(instance, store)
+        yield from _stored_energy(instance, store)
     for row in instance.rows:
         if isinstance(row, HoursRow) and row.price is None:
-            findings += _hours(instance, row)
+            yield from _hours(instance, row)
     for meter in (*instance.meters, instance.fleet):
-        findings += _connection(instance, meter)
-    return findings
+        yield from _connection(instance, meter)
 
 
 def _clock(instance: Instance, number: int) -> str:
@@ -51,7 +44,7 @@ def _end(instance: Instance, number: int) -> datetime:
     return (instance.calendar.start + (number + 1) * instance.calendar.interval).astimezone(start.tzinfo)
 
 
-def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
+def _stored_energy(instance: Instance, store: Store) -> Iterator[str]:
     """Follow the most and the least that can be stored; physics, floor, ceiling and final target must leave room."""
     hours = instance.hours
     into = hours * store.charge_efficiency * store.charge_limit_mw * store.can_charge
@@ -67,15 +60,12 @@ def _stored_energy(instance: Instance, store: Store) -> Iterator[Finding]:
             what = f"may hold {ceiling:g} MWh at {_clock(instance, t + 1)}; at least {least:g} MWh must be there"
         else:
             continue
-        start = (f"/initial/{store.id}", f"{store.initial_mwh:g} MWh stored at the start")
-        yield Finding((start,), f"{store.id} {what}.")
+        yield f"{store.id} {what}."
         return
     if most < store.final_floor_mwh - SLACK_MWH:
-        target = (f"/targets/{store.id}/final_stored_mwh", f"at least {store.final_floor_mwh:g} MWh at the end")
-        yield Finding(
-            (target, *((outage.pointer, outage.text) for outage in store.outages)),
+        yield (
             f"{store.id} shall hold {store.final_floor_mwh:g} MWh at {_clock(instance, instance.intervals)}; "
-            f"at most {most:g} MWh can be there.",
+            f"at most {most:g} MWh can be there."
         )
 
 
@@ -84,37 +74,24 @@ def _words(row: HoursRow) -> str:
     return f"Commitment {row.id}{row.where}: {row.due_hours:g} h of {verb} at {row.threshold_mw:g} MW or more"
 
 
-def _hours(instance: Instance, row: HoursRow) -> Iterator[Finding]:
+def _hours(instance: Instance, row: HoursRow) -> Iterator[str]:
     """Count the intervals that can reach the threshold, then weigh the energy they need."""
     due = whole_intervals(row.due_hours, instance.hours)
     if due <= 0:
         return
-    member = (row.pointer, _words(row))
     power = most_power(instance.units, row)
     able = [t for t in row.intervals if t in row.excused or power[t] >= row.threshold_mw - SLACK_MW]
     counted = in_blocks(able, row.min_block)
     if len(counted) < due:
         unit = f" in unbroken stretches of {row.min_block * instance.hours:g} h" if row.min_block > 1 else ""
-        yield Finding(
-            (member, *_outages(instance, row.units, row.intervals)),
+        yield (
             f"{_words(row)} cannot fit: limits and outages allow it for at most "
-            f"{len(counted) * instance.hours:g} h{unit} of the time that counts.",
+            f"{len(counted) * instance.hours:g} h{unit} of the time that counts."
         )
         return
     only = instance.units[row.units[0]] if row.asset is not None and row.units else None
     if isinstance(only, Store) and row.sign > 0:
-        yield from _energy_for_hours(instance, row, only, counted, due, member)
-
-
-def _outages(instance: Instance, units: Iterable[int], intervals: Iterable[int]) -> list[tuple[str, str]]:
-    """Name the outages of these units that touch any of the intervals: what they leave is all there is."""
-    asked = set(intervals)
-    return [
-        (outage.pointer, outage.text)
-        for number in units
-        for outage in instance.units[number].outages
-        if asked.intersection(outage.intervals)
-    ]
+        yield from _energy_for_hours(instance, row, only, counted, due)
 
 
 def in_blocks(able: list[int], least: int) -> list[int]:
@@ -129,9 +106,7 @@ def in_blocks(able: list[int], least: int) -> list[int]:
     return kept
 
 
-def _energy_for_hours(
-    instance: Instance, row: HoursRow, store: Store, counted: list[int], due: int, member: tuple[str, str]
-) -> Iterator[Finding]:
+def _energy_for_hours(instance: Instance, row: HoursRow, store: Store, counted: list[int], due: int) -> Iterator[str]:
     """Compare what the hours take from the store with what can be there: the start, and charging in between.
 
     A delivering interval charges nothing, so of the intervals up to the last one that counts, all but those
@@ -140,31 +115,28 @@ def _energy_for_hours(
     paid = due - len(row.excused.intersection(counted))
     if paid <= 0:
         return
-    at_start = (f"/initial/{store.id}", f"{store.initial_mwh:g} MWh stored at the start")
-    at_end = (f"/targets/{store.id}/final_stored_mwh", f"at least {store.final_floor_mwh:g} MWh at the end")
     last, end = counted[-1], instance.intervals - 1
     weighed = (
-        (last, float(store.floor_mwh[last]), "its floor", (member, at_start)),
-        (end, store.final_floor_mwh, "its final target", (member, at_start, at_end)),
+        (last, float(store.floor_mwh[last]), "its floor"),
+        (end, store.final_floor_mwh, "its final target"),
     )
     hours = instance.hours
     needed = paid * hours * row.threshold_mw / store.discharge_efficiency
-    for until, kept_back, what, members in weighed:
+    for until, kept_back, what in weighed:
         best = np.sort((store.charge_limit_mw * store.can_charge)[: until + 1])[::-1][: until + 1 - paid]
         charged = float(best.sum()) * hours * store.charge_efficiency
         spare = store.most_initial_mwh - kept_back
         if needed > spare + charged + SLACK_MWH:
-            yield Finding(
-                (*members, *_outages(instance, row.units, range(until + 1))),
+            yield (
                 f"{paid * hours:g} h at {row.threshold_mw:g} MW need {needed:g} MWh from {store.id} between "
                 f"{_clock(instance, counted[0])} and {_clock(instance, last + 1)}; {spare:g} MWh above {what} at the "
                 f"start and at most {charged:g} MWh charged by {_clock(instance, until + 1)} make at most "
-                f"{max(spare + charged, 0.0):g} MWh (commitment {row.id}).",
+                f"{max(spare + charged, 0.0):g} MWh (commitment {row.id})."
             )
             return
 
 
-def _connection(instance: Instance, meter: Meter) -> Iterator[Finding]:
+def _connection(instance: Instance, meter: Meter) -> Iterator[str]:
     """Weigh what loads draw against what the connection and the stores behind it can bring."""
     discharge = np.zeros(instance.intervals)
     for number in meter.units:
@@ -172,9 +144,8 @@ def _connection(instance: Instance, meter: Meter) -> Iterator[Finding]:
     short = meter.load_mw - meter.import_limit_mw - discharge
     if (short > SLACK_MW).any():
         t = int(np.argmax(short))
-        yield Finding(
-            ((meter.pointer, f"import limit of {meter.id}"),),
-            f"loads at {meter.id} draw {meter.load_mw[t]:g} MW at {_clock(instance, t)}; its import limit of "
+        yield (
+            f"Loads at {meter.id} draw {meter.load_mw[t]:g} MW at {_clock(instance, t)}; its import limit of "
             f"{meter.import_limit_mw[t]:g} MW and its plants bring at most "
-            f"{meter.import_limit_mw[t] + discharge[t]:g} MW.",
+            f"{meter.import_limit_mw[t] + discharge[t]:g} MW."
         )

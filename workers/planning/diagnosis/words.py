@@ -34,8 +34,8 @@ def _sentence(trouble: Trouble, conflict: Conflict, reached: Sequence[Reached]) 
     """Say why a conflict is one: by arithmetic where that shows it, else by what stands against what."""
     had = _had(conflict, reached)
     alone = trouble.scope.without(frozenset(trouble.scope.elements) - conflict)
-    if findings := screen(alone):
-        return " ".join([findings[0].sentence, *had])
+    if sentences := screen(alone):
+        return " ".join([sentences[0], *had])
     members = [element for element in reversed(trouble.scope.elements) if element in conflict]
     if not members:
         return " ".join(["Even with everything asked left out there is no schedule.", *_physics(alone)])
