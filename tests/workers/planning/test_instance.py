@@ -35,13 +35,9 @@ def rows(*commitments: Any, **members: Any) -> list[HoursRow]:
 
 def test_meters_are_sites_and_assets_without_one_with_what_is_drawn_there() -> None:
     found = whole()
-    assert [(meter.id, meter.pointer, meter.units) for meter in found.meters] == [
-        ("quay", "/fleet/sites/0", (0,)),
-        ("mole", "/fleet/sites/1", (1,)),
-        ("free-b1", "/fleet/assets/2", (2,)),
-    ]
+    assert [(meter.id, meter.units) for meter in found.meters] == [("quay", (0,)), ("mole", (1,)), ("free-b1", (2,))]
     assert [meter.load_mw.tolist() for meter in found.meters] == [[0.625, 1.125], [0.0, 0.0], [0.0, 0.0]]
-    assert (found.fleet.id, found.fleet.pointer, found.fleet.units) == ("fleet", "/fleet", (0, 1, 2))
+    assert (found.fleet.id, found.fleet.units) == ("fleet", (0, 1, 2))
     assert found.fleet.load_mw.tolist() == [0.625, 1.125]
 
 
