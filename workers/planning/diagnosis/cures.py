@@ -202,9 +202,9 @@ class CureSearch:
 
 
 def least_step(cures: Callable[[int], bool], fails: int, works: int, near: int | None = None) -> int:
-    """Find a step that cures while the one before it does not: by strides from below or from a guess, then by halving.
+    """Find a step that cures while the one before it does not: near a guess, by strides from below, or by halving.
 
-    `fails` is a step that is known not to cure, `works` one that does.
+    `fails` is a step that is known not to cure, `works` one that does; strides begin where something is known to fail.
     """
     if near is not None and fails < near < works:
         if cures(near):
@@ -214,7 +214,7 @@ def least_step(cures: Callable[[int], bool], fails: int, works: int, near: int |
             works = near - 1
         else:
             fails = near
-    stride = 1
+    stride = 1 if fails else works
     while fails + stride < works:
         if cures(fails + stride):
             works = fails + stride
