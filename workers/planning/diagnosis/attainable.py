@@ -1,6 +1,6 @@
 """How far each commitment can be met: the least it must miss with everything else held."""
 
-from collections.abc import Callable, Collection, Iterable, Iterator
+from collections.abc import Callable, Collection, Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from math import ceil, floor
 
@@ -37,10 +37,23 @@ def reached(trouble: Trouble, known: Collection[Element], solving: Solving) -> I
     for row in scope.instance.rows:
         if row.price is None and row_of(row) in named and row_of(row) not in known:
             left_out = _in_the_way(trouble, row_of(row), trouble.tester(solving))
-            least = least_shortfall(scope, row, left_out, solving)
             required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
-            side = 1.0 if is_ceiling(row) else -1.0
-            yield Reached(row, required, max(0.0, required + side * least), tuple(left_out))
+            yield Reached(row, required, _attainable(scope, row, required, left_out, solving), tuple(left_out))
+
+
+def _attainable(
+    scope: Scope, row: CommitmentRow, required: float, left_out: Sequence[Element], solving: Solving
+) -> float:
+    """Give what a row can have at most (a ceiling: at least), in its unit, with all but `left_out` held.
+
+    Hours may be more than are asked where something had to be left out.
+    """
+    asked, more = row, 0.0
+    if isinstance(row, HoursRow) and left_out:
+        asked = replace(row, due_hours=len(row.intervals) * scope.instance.hours)
+        more = asked.due_hours - row.due_hours
+    least = solve_shortfall(scope.without(left_out), asked, solving)
+    return max(0.0, required + least if is_ceiling(row) else required + more - least)
 
 
 def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozenset[Element]], bool]) -> list[Element]:
@@ -65,12 +78,6 @@ def _facts_first(elements: Iterable[Element]) -> list[Element]:
     return sorted(elements, key=lambda element: SPARED_FIRST.index(element.kind))
 
 
-def least_shortfall(scope: Scope, row: CommitmentRow, left_out: Iterable[Element], solving: Solving) -> float:
-    """Find the least that a row must miss, in its unit, with all but `left_out` held; raises CutShort."""
-    instance = scope.without([element for element in left_out if element != row_of(row)])
-    return solve_shortfall(instance, row, solving)
-
-
 def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> float:
     """Price one row alone, and find the schedule that misses least of it, in its unit; raises CutShort.
 
@@ -78,7 +85,7 @@ def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) ->
     """
     hours, grain = instance.hours, grain_of(row, instance.hours)
     bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
-    rows = tuple(replace(other, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
+    rows = tuple(replace(row, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
     # hours come in whole intervals: less than one of them open is none
     gap = grain * (1 - 5 * CLOSE if isinstance(row, HoursRow) else CLOSE)
     found = solving.solve(replace(bare, rows=rows, absolute_gap=gap, relative_gap=1e-9))

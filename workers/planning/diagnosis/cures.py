@@ -1,6 +1,6 @@
 """The least changes that make a part possible: one lever where one does, several together where none does alone."""
 
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Collection, Iterator, Mapping
 from dataclasses import dataclass
 from itertools import combinations
 
@@ -10,6 +10,7 @@ from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.levers import levers_of
 from workers.planning.diagnosis.levers.lever import Lever, Values
 from workers.planning.diagnosis.localise import Trouble
+from workers.planning.diagnosis.scope import Scope
 from workers.planning.instance import Instance
 from workers.planning.screening import screen
 
@@ -98,13 +99,42 @@ class CureSearch:
         """Find the least steps of some levers that cure together, one after the other; None where all do not."""
         if len(levers) == 1 and (known := self._known(levers[0])):
             return (known,)
+        needed = {lever: self._needed_at_home(lever, levers) for lever in levers}
+        if all(needed.values()) and self._is_cured(needed):
+            return tuple(Move(lever, step) for lever, step in needed.items())
         steps = {lever: lever.steps for lever in levers}
         if not self._is_cured(steps):
             return None
         for lever in levers:
             without = steps | {lever: 0}
-            steps[lever] = 0 if self._is_cured(without) else self._least_step(lever, steps)
+            steps[lever] = 0 if self._is_cured(without) else self._least_step(lever, steps, needed[lever])
         return tuple(Move(lever, step) for lever, step in steps.items() if step > 0)
+
+    def _needed_at_home(self, lever: Lever, levers: Collection[Lever]) -> int:
+        """Give a step below which a lever cannot cure: what a smaller scope of the part needs, all else at its loosest.
+
+        0 where no conflict that it eases was found in a smaller scope.
+        """
+        needed = 0
+        for home in {id(home): home for home in self._trouble.homes.values()}.values():
+            places = {(other.pointer, other.unit) for other in levers}
+            own = [each for each in levers_of(home, home.elements) if (each.pointer, each.unit) in places]
+            moved = next((each for each in own if (each.pointer, each.unit) == (lever.pointer, lever.unit)), None)
+            if moved is not None:
+                needed = max(needed, self._least_at_home(moved, [each for each in own if each is not moved], home))
+        return min(needed, lever.steps)
+
+    def _least_at_home(self, moved: Lever, others: Collection[Lever], home: Scope) -> int:
+        job = home.job
+        for other in others:
+            job = other.apply(job, other.steps)
+
+        def is_possible(step: int) -> bool:
+            return self._time().is_possible(home.instance_of(moved.apply(job, step) if step else job))
+
+        if is_possible(0):
+            return 0
+        return least_step(is_possible, 0, moved.steps, self._guess(moved)) if is_possible(moved.steps) else moved.steps
 
     def _combined(self, levers: list[Lever]) -> Iterator[Cure]:
         """Cure by several levers that together touch every conflict; conflicts that show up on the way are added.
@@ -171,12 +201,13 @@ class CureSearch:
             job = lever.apply(job, step) if step else job
         return self._trouble.scope.instance_of(job)
 
-    def _least_step(self, lever: Lever, steps: Mapping[Lever, int]) -> int:
+    def _least_step(self, lever: Lever, steps: Mapping[Lever, int], needed: int) -> int:
         """Find the step that cures while the one before does not; step 0 is known not to, the last one to.
 
-        Arithmetic tells from where on it is worth asking a solver.
+        Arithmetic, and what is `needed` at home, tell from where on it is worth asking a solver.
         """
-        hopeless = least_step(lambda step: not screen(self._at({**steps, lever: step})), 0, lever.steps) - 1
+        refused = least_step(lambda step: not screen(self._at({**steps, lever: step})), 0, lever.steps) - 1
+        hopeless = max(refused, needed - 1)
 
         def cures(step: int) -> bool:
             return self._is_cured({**steps, lever: step})

@@ -20,12 +20,13 @@ Conflict = frozenset[Element]
 class Trouble:
     """An independent part that cannot be met: its scope, what is known to be in conflict there, and what was tried.
 
-    `is_complete` when every conflict of it is known.
+    `homes` are the smaller scopes in which conflicts were found; `is_complete` when every conflict is known.
     """
 
     scope: Scope
     part: Instance
     conflicts: list[Conflict] = field(default_factory=list)
+    homes: dict[Conflict, Scope] = field(default_factory=dict)
     is_complete: bool = False
     tried: dict[frozenset[Element], bool] = field(default_factory=dict)
 
@@ -83,6 +84,8 @@ def find_conflicts(question: Question, trouble: Trouble, solving: Solving) -> No
         is_possible, is_likely = trouble.tester(solving, scope), trouble.guesser(solving, scope)
         for conflict in independent_conflicts(scope.elements, is_possible, trouble.conflicts, is_likely):
             trouble.conflicts.append(conflict)
+            if scope is not trouble.scope:
+                trouble.homes[conflict] = scope
 
 
 def _smaller(question: Question, part: Instance) -> Iterator[Scope]:

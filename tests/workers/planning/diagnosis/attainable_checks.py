@@ -19,9 +19,6 @@ ROUND_OFF = 1e-4
 STEP = 0.01
 """Energies are given to this, MWh or MW times h; hours are whole intervals."""
 
-MOST_TRIED = 150
-"""Sets of elements tried for one smaller than a `left_out`."""
-
 
 def wrong_attainable(document: Document, diagnosis: Diagnosis) -> Iterator[str]:
     """Name figures that are not the oracle's optimum with the rest held, and more left out than is needed."""
@@ -80,8 +77,7 @@ def _wrong_figure(document: Document, row: Element, entry: Attainable) -> Iterat
             continue
         reached.append(most)
         if _says(commitment, figure, due, most):
-            near = [element for element in rest if element not in elsewhere]
-            found = list(_smaller_sets(document, row, near, left_out, elsewhere))
+            found = list(_smaller_sets(document, row, left_out, elsewhere))
             if not found:
                 return
             too_much += found
@@ -103,14 +99,9 @@ def _read_as(pointer: str, rest: list[Element]) -> list[tuple[Element, ...]]:
     return [some for size in range(len(named), 0, -1) for some in combinations(named, size)]
 
 
-def _smaller_sets(
-    document: Document, row: Element, rest: list[Element], left_out: list[Element], elsewhere: list[Element]
-) -> Iterator[str]:
-    """Try every set one smaller than what is left out: none may do."""
-    if not left_out:
-        return
-    smaller = list(combinations(rest, len(left_out) - 1))
-    for fewer in smaller if len(smaller) <= MOST_TRIED else combinations(left_out, len(left_out) - 1):
+def _smaller_sets(document: Document, row: Element, left_out: list[Element], elsewhere: list[Element]) -> Iterator[str]:
+    """Put every member of what is left out back in: with none of them may the rest hold."""
+    for fewer in combinations(left_out, len(left_out) - 1) if left_out else ():
         if is_possible_without(document, [*fewer, *elsewhere, row]):
             yield f"attainable {names([row])} without {names(left_out)}: leaving out {names(fewer)} is enough"
             return
