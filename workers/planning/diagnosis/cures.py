@@ -63,11 +63,11 @@ class CureSearch:
             try:
                 cure = next(self._search, None)
             except CutShort:
-                self._search = iter(())  # a generator that raised has ended
+                self._search = None  # it begins anew, and knows what was tried
                 raise
             if cure is None:
                 self.is_done = True
-            else:
+            elif not any(places(cure) == places(known) for known in self.cures):
                 self.cures.append(cure)
 
     def _all(self) -> Iterator[Cure]:
@@ -117,8 +117,8 @@ class CureSearch:
         """
         needed = 0
         for home in {id(home): home for home in self._trouble.homes.values()}.values():
-            places = {(other.pointer, other.unit) for other in levers}
-            own = [each for each in levers_of(home, home.elements) if (each.pointer, each.unit) in places]
+            chosen = {(other.pointer, other.unit) for other in levers}
+            own = [each for each in levers_of(home, home.elements) if (each.pointer, each.unit) in chosen]
             moved = next((each for each in own if (each.pointer, each.unit) == (lever.pointer, lever.unit)), None)
             if moved is not None:
                 needed = max(needed, self._least_at_home(moved, [each for each in own if each is not moved], home))
@@ -230,6 +230,11 @@ class CureSearch:
         if float(lever.shown(lever.steps)) > figure + 1e-9:
             return None
         return least_step(lambda step: float(lever.shown(step)) <= figure + 1e-9, 0, lever.steps)
+
+
+def places(cure: Cure) -> frozenset[tuple[str, str]]:
+    """Name the levers of a cure, whatever their steps."""
+    return frozenset((move.lever.pointer, move.lever.unit) for move in cure)
 
 
 def least_step(cures: Callable[[int], bool], fails: int, works: int, near: int | None = None) -> int:

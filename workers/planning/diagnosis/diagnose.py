@@ -66,11 +66,11 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
     def step(name: str, done: float, work: Callable[[Solving], None], most: float = inf) -> float:
         began = solving.limits.clock()
         solving.watch.progress("diagnosing", done)
+        found.cut_off = [other for other in found.cut_off if other != name]
         try:
             work(solving.until(SHARES[name], most))
         except CutShort:
-            if name not in found.cut_off:
-                found.cut_off.append(name)
+            found.cut_off.append(name)
         return solving.limits.clock() - began
 
     first = step("conflicts", 0.1, lambda s: _find_conflicts(found, proven, s))

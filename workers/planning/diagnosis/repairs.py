@@ -4,7 +4,7 @@ from collections.abc import Iterator, Sequence
 
 from schemas.diagnosis import Change, Repair
 from workers.planning.diagnosis.again import Planner
-from workers.planning.diagnosis.cures import Cure, Move
+from workers.planning.diagnosis.cures import Cure, Move, places
 from workers.planning.diagnosis.feasibility import Solving
 from workers.planning.diagnosis.levers.lever import Values
 from workers.planning.diagnosis.patches import document_of, patch_of, patched_job
@@ -64,12 +64,8 @@ def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Move]]:
     A commitment may bind assets of several parts: it is not eased by its hours in one and its threshold in another.
     """
     for wanted in [cures[0][0], *(cure for of_part in cures for cure in of_part[1:])][:MOST_REPAIRS]:
-        chosen = [next((cure for cure in of_part if _places(cure) == _places(wanted)), of_part[0]) for of_part in cures]
+        chosen = [next((cure for cure in of_part if places(cure) == places(wanted)), of_part[0]) for of_part in cures]
         yield _joined(chosen)
-
-
-def _places(cure: Cure) -> frozenset[tuple[str, str]]:
-    return frozenset((move.lever.pointer, move.lever.unit) for move in cure)
 
 
 def _joined(cures: Sequence[Cure]) -> list[Move]:
