@@ -20,6 +20,10 @@ def json_bytes(document: object) -> bytes:
     return json.dumps(document, allow_nan=False, ensure_ascii=False, separators=(",", ":")).encode() + b"\n"
 
 
+SECONDS_UNTIL_THE_STORE_IS_BACK = 2
+"""What `Retry-After` says while the store is out of reach."""
+
+
 def json_answer(document: object, status: int = 200, headers: Mapping[str, str] | None = None) -> Response:
     """Answer with a JSON document."""
     return Response(json_bytes(document), status, headers, content_type=JSON)

@@ -15,7 +15,7 @@ from werkzeug.routing import BaseConverter
 from schemas.problems import RefusedError
 from service.store import DocumentStore, JobForgotten, JobStore, StoreFull, StoreUnreachable
 from service.web import jobs, openapi, results, status, stored_documents
-from service.web.answers import SHOWN_TO_PROGRAMS, accepted, problem_answer
+from service.web.answers import SECONDS_UNTIL_THE_STORE_IS_BACK, SHOWN_TO_PROGRAMS, accepted, problem_answer
 from service.web.bodies import Bodies
 from service.web.logs import FAULTS, REQUESTS
 from service.web.operations import Backend, Call, Operation, Waiters
@@ -23,7 +23,6 @@ from service.web.parameters import read_query, require_host
 from service.web.problems import AnyProblemType, HttpProblem, refusal
 from service.web.settings import WebSettings
 
-SECONDS_UNTIL_THE_STORE_IS_BACK = 2
 _REQUEST_ID = re.compile(r"[A-Za-z0-9._-]{1,128}")
 _OWN_WORDS: dict[int, tuple[AnyProblemType, str]] = {
     404: ("not-found", "there is nothing at this address"),

@@ -9,7 +9,7 @@ from flask import Response
 from schemas import support
 from schemas.document import Answer
 from service.store import StoreUnreachable
-from service.web.answers import JSON, json_answer, tagged_json
+from service.web.answers import JSON, SECONDS_UNTIL_THE_STORE_IS_BACK, json_answer, tagged_json
 from service.web.operations import Backend, Call, Operation, Success
 from service.web.problems import MEANINGS, HttpProblem
 from service.web.shapes import (
@@ -56,7 +56,9 @@ class Status:
     def ready(self, _call: Call) -> Response:
         """Say whether jobs are taken: 503 while the store is out of reach or this process is ending."""
         found = self._readiness()
-        return json_answer(dumped(found), 503 if found.status == "fail" else 200)
+        if found.status == "fail":
+            return json_answer(dumped(found), 503, {"Retry-After": str(SECONDS_UNTIL_THE_STORE_IS_BACK)})
+        return json_answer(dumped(found))
 
     def _readiness(self) -> Readiness:
         unknown = ReadinessChecks(store="fail", keeper=None, workers=None, workers_by_queue=None, queued=None)
@@ -98,7 +100,8 @@ def operations(backend: Backend) -> list[Operation]:
     """List the endpoints of the service itself."""
     status = Status(backend)
     readiness = Success(200, "Jobs are taken", {JSON: Readiness})
-    unready = Success(503, "Jobs are not taken: the store is out of reach or the process is ending", {JSON: Readiness})
+    why = "Jobs are not taken: the store is out of reach or the process is ending"
+    unready = Success(503, why, {JSON: Readiness}, ("Retry-After",))
     return [
         _read("readVersion", "/v1/version", status.version, "Read which versions answer", VersionDocument),
         _read("isAlive", "/health/live", status.live, "Tell whether the process answers", Alive),

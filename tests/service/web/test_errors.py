@@ -191,6 +191,7 @@ def test_an_unreachable_store_is_503_but_for_liveness(house: House) -> None:
         assert house.call("GET", "/health/live").status == 200
         ready = house.call("GET", "/health/ready")
         assert (ready.status, ready.document["status"]) == (503, "fail")
+        assert int(ready.headers["retry-after"]) > 0
         assert house.call("POST", "/v1/jobs/validate", plain()).status == 200
     finally:
         house.outage.lift()
