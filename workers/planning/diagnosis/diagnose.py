@@ -20,8 +20,16 @@ from workers.planning.diagnosis.scope import Question, row_of
 from workers.planning.parts import independent_parts
 from workers.planning.rows import HoursRow
 
-SHARES = {"conflicts": 0.4, "more conflicts": 0.25, "attainable": 0.3, "cures": 0.4, "repairs": 0.5, "nearest": 0.9}
-"""Share of the time that is left which each step may take, in this order."""
+SHARES = {
+    "where": 0.3,
+    "conflicts": 0.4,
+    "more conflicts": 0.25,
+    "attainable": 0.3,
+    "cures": 0.4,
+    "repairs": 0.5,
+    "nearest": 0.9,
+}
+"""Share of the time that is left which each step may take."""
 
 FIRST_REPAIR = 0.45
 """Progress when a repair has been planned."""
@@ -73,7 +81,8 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
             found.cut_off.append(name)
         return solving.limits.clock() - began
 
-    first = step("conflicts", 0.1, lambda s: _find_conflicts(found, proven, s))
+    first = step("where", 0.05, lambda s: _find_parts(found, proven, s))
+    first += step("conflicts", 0.1, lambda s: _find_conflicts(found, s))
     step("attainable", 0.2, lambda s: _find_reached(found, s))
     step("cures", 0.3, lambda s: _find_cures(found, s, 1))
     step("repairs", 0.4, lambda s: _find_repairs(found, planner, s, FIRST_REPAIR))
@@ -87,10 +96,13 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
     return found
 
 
-def _find_conflicts(found: Findings, proven: Collection[tuple[str, ...]], solving: Solving) -> None:
+def _find_parts(found: Findings, proven: Collection[tuple[str, ...]], solving: Solving) -> None:
     parts = independent_parts(found.question.instance)
     for trouble in troubles_of(found.question, parts, proven, solving):
         found.troubles.append(trouble)
+
+
+def _find_conflicts(found: Findings, solving: Solving) -> None:
     for trouble in found.troubles:
         find_conflicts(found.question, trouble, solving)
 

@@ -12,6 +12,7 @@ from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.words import summary_of
 
 CUT_OFF = {
+    "where": "the search for further parts that cannot be met",
     "conflicts": "the search for the conflicts",
     "attainable": "how far each commitment can be met",
     "cures": "the search for changes that would do",
