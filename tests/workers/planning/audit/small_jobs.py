@@ -119,3 +119,10 @@ def only(result: Replay) -> Violation:
     """Return the one violation there is."""
     assert len(result.verification.violations) == 1, result.verification.violations
     return result.verification.violations[0]
+
+
+def facts(violation: Violation) -> tuple[Any, ...]:
+    """Return all a violation says but its text: rule, pointer, asset, the hour its interval starts, amount, unit."""
+    start = violation.interval_start
+    hour = None if start is None else start.hour
+    return violation.rule, violation.pointer, violation.asset, hour, violation.amount, violation.unit

@@ -4,7 +4,18 @@ from typing import Any
 
 import pytest
 
-from tests.workers.planning.audit.small_jobs import Document, audit, broken, job, load, one_store, only, store, window
+from tests.workers.planning.audit.small_jobs import (
+    Document,
+    audit,
+    broken,
+    facts,
+    job,
+    load,
+    one_store,
+    only,
+    store,
+    window,
+)
 
 
 def outage(begin: str, end: str | None, asset: str = "quay-b1", **left: Any) -> Document:
@@ -75,6 +86,23 @@ def test_of_overlapping_outages_the_smallest_fraction_holds() -> None:
     assert (found.rule, found.pointer) == ("discharge_limit", "/outages/0")
 
 
+def test_of_outages_that_leave_as_little_the_first_in_the_request_is_named() -> None:
+    outages = [outage("00:00:00", "02:00:00", available_fraction=0.5)] * 2
+    assert only(one_store([1.0, 1.25], outages=outages)).pointer == "/outages/0"
+
+
+def test_an_outage_that_takes_nothing_is_not_what_a_limit_is_broken_by() -> None:
+    outages = [outage("00:00:00", None, available_fraction=1.0)]
+    assert only(one_store([2.25], outages=outages)).pointer == "/fleet/assets/0/discharge_limit_mw"
+
+
+def test_a_breach_of_an_outage_names_the_store_its_interval_and_mw() -> None:
+    outages = [outage("01:00:00", "02:00:00", available_fraction=0.5)]
+    # Half of 2 MW is left.
+    found = only(one_store([0.0, 1.25, 0.0], outages=outages))
+    assert facts(found) == ("discharge_limit", "/outages/0", "quay-b1", 1, 0.25, "MW")
+
+
 def test_a_direction_has_its_own_fraction_and_the_other_is_untouched() -> None:
     outages = [outage("00:00:00", None, available_charge_fraction=0.5)]
     assert broken(one_store([2.0, -1.0], outages=outages)) == []
@@ -112,8 +140,8 @@ def test_a_load_decided_to_draw_its_forecast_holds_and_anything_else_breaks_it()
     assert broken(audit(document, {"quay-cranes": [-0.75, -0.75]})) == []
     for drawn, gap in ((-0.5, 0.25), (-0.8, 0.05), (0.75, 1.5)):
         found = only(audit(document, {"quay-cranes": [-0.75, drawn]}))
-        assert (found.rule, found.pointer, found.asset) == ("forecast", "/forecasts/quay-cranes", "quay-cranes")
-        assert found.amount == pytest.approx(gap)
+        amount = pytest.approx(gap)
+        assert facts(found) == ("forecast", "/forecasts/quay-cranes", "quay-cranes", 1, amount, "MW")
 
 
 def test_an_outage_scales_what_a_load_draws() -> None:

@@ -2,7 +2,7 @@
 
 import pytest
 
-from tests.workers.planning.audit.small_jobs import audit, broken, job, one_store, only, store, window
+from tests.workers.planning.audit.small_jobs import audit, broken, facts, job, one_store, only, store, window
 
 
 def stored(result: object) -> list[float]:
@@ -70,6 +70,18 @@ def test_a_store_assumed_at_its_middle_runs_and_returns_there() -> None:
     assert broken(one_store([1.0, -0.5], asset=asset, **unknown)) == ["final_stored"]
 
 
+def test_a_store_assumed_at_its_middle_did_before_what_is_said() -> None:
+    slow = store(ramp_mw_per_hour=0.5)
+    initial = {"quay-b1": {"power_mw": 1.0}}
+    assert broken(one_store([1.5], asset=slow, initial=initial, missing_initial="assume_middle")) == []
+    assert broken(one_store([0.25], asset=slow, initial=initial, missing_initial="assume_middle")) == ["ramp"]
+    steady = store(min_discharge_mw=0.5, min_charge_mw=0.5, min_run_hours=3)
+    initial = {"quay-b1": {"power_mw": 1.0, "hours_in_state": 1.0}}
+    # An hour before the window and one in it are one less than three.
+    found = only(one_store([1.0, 0.0], asset=steady, initial=initial, missing_initial="assume_middle"))
+    assert (found.rule, found.amount) == ("min_run", 1.0)
+
+
 def test_a_store_held_out_stands_idle_with_no_target_and_keeps_losing() -> None:
     asset = store(min_stored_mwh=4.0, self_discharge_per_hour=0.5, standby_load_mw=0.2)
     held = {
@@ -87,7 +99,7 @@ def test_a_store_held_out_stands_idle_with_no_target_and_keeps_losing() -> None:
 def test_a_store_held_out_may_not_run() -> None:
     asset = store(min_stored_mwh=4.0, ramp_mw_per_hour=0.1)
     found = only(one_store([0.0, -0.5], asset=asset, initial={"quay-b1": None}, missing_initial="hold_out"))
-    assert (found.rule, found.pointer, found.amount) == ("hold_out", "/missing_initial", 0.5)
+    assert facts(found) == ("hold_out", "/missing_initial", "quay-b1", 1, 0.5, "MW")
 
 
 def test_commitments_on_a_store_held_out_stay_due() -> None:

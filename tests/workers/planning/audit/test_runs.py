@@ -4,7 +4,7 @@ from typing import Any
 
 import pytest
 
-from tests.workers.planning.audit.small_jobs import Document, broken, one_store, only, store, window
+from tests.workers.planning.audit.small_jobs import Document, broken, facts, one_store, only, store, window
 
 
 def runner(**members: Any) -> Document:
@@ -96,7 +96,7 @@ def test_a_run_under_way_counts_the_hours_before_the_window() -> None:
     asset = runner(min_run_hours=3)
     assert broken(one_store([1.0, 0.0, 0.0], asset=asset, initial=before(1.0, 2.0))) == []
     found = only(one_store([0.0, 0.0, 0.0], asset=asset, initial=before(1.0, 2.0)))
-    assert (found.rule, found.amount) == ("min_run", 1.0)
+    assert facts(found) == ("min_run", "/fleet/assets/0/min_run_hours", "quay-b1", 0, 1.0, "h")
     assert broken(one_store([0.0, 0.0], asset=asset, initial=before(1.0, 2.9))) == ["min_run"]
     assert broken(one_store([0.0, 0.0], asset=asset, initial=before(1.0, 3.0))) == []
 
@@ -134,9 +134,13 @@ def test_a_rest_as_long_as_it_must_be_holds() -> None:
 
 def test_a_shorter_rest_breaks_the_rest_time() -> None:
     found = only(one_store([1.0, 0.0, 1.0, 0.0], asset=runner(min_rest_hours=2)))
-    assert (found.rule, found.pointer, found.amount) == ("min_rest", "/fleet/assets/0/min_rest_hours", 1.0)
-    assert found.interval_start is not None
-    assert found.interval_start.hour == 2
+    assert facts(found) == ("min_rest", "/fleet/assets/0/min_rest_hours", "quay-b1", 2, 1.0, "h")
+
+
+def test_a_rest_of_one_interval_binds() -> None:
+    assert broken(one_store([1.0, 0.0, -1.0], asset=runner(min_rest_hours=1))) == []
+    found = only(one_store([1.0, -1.0], asset=runner(min_rest_hours=1)))
+    assert facts(found) == ("min_rest", "/fleet/assets/0/min_rest_hours", "quay-b1", 1, 1.0, "h")
 
 
 def test_a_change_of_direction_without_a_pause_breaks_a_rest_time_and_nothing_else() -> None:
@@ -172,8 +176,12 @@ def test_as_many_starts_as_allowed_hold_and_one_more_breaks() -> None:
     asset = runner(max_starts_per_day=2)
     assert broken(one_store([1.0, 0.0, 1.0, 1.0, 0.0], asset=asset)) == []
     found = only(one_store([1.0, 0.0, 1.0, 0.0, 1.0], asset=asset))
-    assert (found.rule, found.pointer) == ("max_starts_per_day", "/fleet/assets/0/max_starts_per_day")
-    assert (found.amount, found.unit) == (1.0, "starts")
+    where = "/fleet/assets/0/max_starts_per_day"
+    assert facts(found) == ("max_starts_per_day", where, "quay-b1", 0, 1.0, "starts")
+    # One before the window and two in it are one more than two.
+    counted = {"assets": {"quay-b1": {"starts": 1}}}
+    found = only(one_store([1.0, 0.0, 1.0], asset=asset, counted_before=counted))
+    assert facts(found) == ("max_starts_per_day", where, "quay-b1", 0, 1.0, "starts")
 
 
 def test_a_change_of_direction_is_a_start() -> None:
@@ -191,7 +199,8 @@ def test_a_run_under_way_is_no_start_but_one_the_other_way_is() -> None:
 def test_a_day_that_had_more_starts_than_it_may_has_none_left_and_owes_none() -> None:
     asset, counted = runner(max_starts_per_day=1), {"assets": {"quay-b1": {"starts": 3}}}
     assert broken(one_store([0.0, 0.0], asset=asset, counted_before=counted)) == []
-    assert broken(one_store([0.0, 1.0], asset=asset, counted_before=counted)) == ["max_starts_per_day"]
+    found = only(one_store([0.0, 1.0], asset=asset, counted_before=counted))
+    assert (found.rule, found.amount) == ("max_starts_per_day", 1.0)
 
 
 def test_starts_before_the_window_count_towards_its_first_day_only() -> None:

@@ -4,7 +4,7 @@ from math import sqrt
 
 import pytest
 
-from tests.workers.planning.audit.small_jobs import broken, one_store, only, store, window
+from tests.workers.planning.audit.small_jobs import Document, broken, facts, one_store, only, store, window
 
 
 def test_discharging_at_the_limit_holds() -> None:
@@ -62,6 +62,31 @@ def test_running_below_the_minimum_power_breaks_it() -> None:
     assert found.amount == pytest.approx(0.05)
 
 
+def test_a_store_may_have_a_minimum_power_in_one_direction_alone() -> None:
+    assert broken(one_store([0.1, -0.25], asset=store(min_charge_mw=0.25))) == []
+    assert broken(one_store([0.1, -0.2], asset=store(min_charge_mw=0.25))) == ["min_charge"]
+    assert broken(one_store([0.5, -0.1], asset=store(min_discharge_mw=0.5))) == []
+
+
+@pytest.mark.parametrize(
+    ("power", "members", "rule", "where", "hour", "amount", "unit"),
+    [
+        ([0.5, 0.25], {"min_discharge_mw": 0.5}, "min_discharge", "min_discharge_mw", 1, 0.25, "MW"),
+        ([-0.5, -0.25], {"min_charge_mw": 0.5}, "min_charge", "min_charge_mw", 1, 0.25, "MW"),
+        # 5 MWh at the start, an hour at each power.
+        ([1.0, 1.25], {"min_stored_mwh": 3.0}, "min_stored", "min_stored_mwh", 1, 0.25, "MWh"),
+        ([-1.0, -1.25], {"max_stored_mwh": 7.0}, "max_stored", "max_stored_mwh", 1, 0.25, "MWh"),
+        # Of a day's 2.5 MWh too many go out by its end; the breach is the day's and stands at its first interval.
+        ([1.0, 1.75], {"max_cycles_per_day": 0.25}, "max_cycles_per_day", "max_cycles_per_day", 0, 0.25, "MWh"),
+    ],
+)
+def test_a_breach_names_the_store_its_interval_and_how_much_of_what(
+    power: list[float], members: Document, rule: str, where: str, hour: int, amount: float, unit: str
+) -> None:
+    found = only(one_store(power, asset=store(**members)))
+    assert facts(found) == (rule, f"/fleet/assets/0/{where}", "quay-b1", hour, amount, unit)
+
+
 def test_stored_energy_follows_power_efficiencies_and_self_discharge() -> None:
     asset = store(charge_efficiency=0.8, discharge_efficiency=0.5, self_discharge_per_hour=0.1)
     stored = one_store([-2.0, 1.0, 0.0], asset=asset).assets[0].stored_mwh
@@ -106,9 +131,7 @@ def test_ending_at_the_final_target_holds_and_below_it_breaks_it() -> None:
     targets = {"quay-b1": {"final_stored_mwh": 4.0}}
     assert broken(one_store([1.0], targets=targets)) == []
     found = only(one_store([1.25, 0.0], targets=targets))
-    assert (found.rule, found.pointer, found.amount) == ("final_stored", "/targets/quay-b1/final_stored_mwh", 0.25)
-    assert found.interval_start is not None
-    assert found.interval_start.hour == 1
+    assert facts(found) == ("final_stored", "/targets/quay-b1/final_stored_mwh", "quay-b1", 1, 0.25, "MWh")
 
 
 def test_without_a_target_a_store_ends_with_what_it_started_with() -> None:

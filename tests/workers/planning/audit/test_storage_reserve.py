@@ -8,6 +8,7 @@ from tests.workers.planning.audit.small_jobs import (
     Document,
     audit_decisions,
     broken,
+    facts,
     job,
     only,
     outage,
@@ -131,17 +132,31 @@ def test_a_floor_widened_at_the_start_is_the_floor_of_reserve() -> None:
     assert broken(holds([0.0], {"up-15": [0.25]}, stored=1.5, **floor)) == ["reserve_up_energy"]
 
 
+def test_a_breach_names_the_interval_in_which_reserve_is_not_backed() -> None:
+    # 2 MW either way, 5 MWh stored, 10 MWh at most; each is 0.25 short in the second hour.
+    up, down = "/fleet/assets/0/discharge_limit_mw", "/fleet/assets/0/charge_limit_mw"
+    found = only(holds([0.0, 0.0], {"up-15": [0.0, 2.25]}))
+    assert facts(found) == ("reserve_up_power", up, "quay-b1", 1, 0.25, "MW")
+    found = only(holds([0.0, 0.0], {"down-60": [0.0, 2.25]}))
+    assert facts(found) == ("reserve_down_power", down, "quay-b1", 1, 0.25, "MW")
+    floor, ceiling = "/fleet/assets/0/min_stored_mwh", "/fleet/assets/0/max_stored_mwh"
+    found = only(holds([0.0, 0.0], {"up-15": [0.0, 1.25]}, stored=1.0))
+    assert facts(found) == ("reserve_up_energy", floor, "quay-b1", 1, 0.25, "MWh")
+    found = only(holds([0.0, 0.0], {"down-60": [0.0, 1.25]}, stored=9.0))
+    assert facts(found) == ("reserve_down_energy", ceiling, "quay-b1", 1, 0.25, "MWh")
+
+
 def test_an_idle_store_holds_reserve_whatever_its_minimum_powers() -> None:
     asset = {"min_discharge_mw": 1.0, "min_charge_mw": 1.0, "ramp_mw_per_hour": 0.0, "min_run_hours": 5.0}
     assert broken(holds([0.0], {"both": [0.5]}, **asset)) == []
 
 
 def test_a_store_that_is_held_out_holds_none() -> None:
-    market = window([0.0], reserve_products=[BOTH])
+    market = window([0.0, 0.0], reserve_products=[BOTH])
     document = {**job([store()], market), "initial": {}, "targets": {}, "missing_initial": "hold_out"}
-    assert broken(audit_decisions(document, {"quay-b1": Decision([0.0], reserve_mw={"both": [0.0]})})) == []
-    found = only(audit_decisions(document, {"quay-b1": Decision([0.0], reserve_mw={"both": [0.5]})}))
-    assert (found.rule, found.amount) == ("hold_out", 0.5)
+    assert broken(audit_decisions(document, {"quay-b1": Decision([0.0, 0.0], reserve_mw={"both": 0.0})})) == []
+    found = only(audit_decisions(document, {"quay-b1": Decision([0.0, 0.0], reserve_mw={"both": [0.0, 0.5]})}))
+    assert facts(found) == ("hold_out", "/missing_initial", "quay-b1", 1, 0.5, "MW")
 
 
 @pytest.mark.parametrize("held", [{}, {"up-15": [0.0]}])
