@@ -4,7 +4,16 @@ from typing import Any
 
 import pytest
 
-from tests.workers.planning.audit.small_jobs import Document, broken, generator, one_generator, only, outage, window
+from tests.workers.planning.audit.small_jobs import (
+    Document,
+    broken,
+    facts,
+    generator,
+    one_generator,
+    only,
+    outage,
+    window,
+)
 
 RISING = generator(ramp_up_mw_per_hour=1.5)
 FALLING = generator(ramp_down_mw_per_hour=1.5)
@@ -17,12 +26,7 @@ def begun_at(output: float, power: list[float], asset: Document, **members: Any)
 def test_output_rises_as_fast_as_its_ramp_and_no_faster() -> None:
     assert broken(begun_at(1.0, [2.5, 4.0], RISING)) == []
     found = only(begun_at(1.0, [2.5, 4.0, 1.0, 2.75], RISING))
-    assert (found.rule, found.pointer, found.amount, found.unit) == (
-        "ramp_up",
-        "/fleet/assets/0/ramp_up_mw_per_hour",
-        0.25,
-        "MW",
-    )
+    assert facts(found) == ("ramp_up", "/fleet/assets/0/ramp_up_mw_per_hour", "quay-g1", 3, 0.25, "MW")
     assert only(begun_at(1.0, [2.75], RISING)).amount == 0.25
 
 
@@ -52,6 +56,13 @@ def test_a_run_begins_and_ends_at_the_larger_of_minimum_and_ramp(ramp: float, mo
 def test_a_start_in_the_first_interval_is_one_from_off() -> None:
     assert broken(one_generator([1.5], asset=RISING)) == []
     assert broken(one_generator([1.6], asset=RISING)) == ["ramp_up"]
+
+
+def test_a_start_is_one_from_nothing_whatever_was_given_while_off() -> None:
+    result = one_generator([0.5, 1.75], [False, True], asset=RISING)
+    assert broken(result) == ["off_with_output", "ramp_up"]
+    # 1.75 MW from off against 1.5 MW, not 1.25 MW from the 0.5 MW that should not have been.
+    assert result.verification.violations[1].amount == 0.25
 
 
 def test_what_ran_before_the_window_stops_from_where_it_was() -> None:

@@ -1,6 +1,15 @@
 """Reserve of a generator: between its minimum and maximum output, and only while it is on."""
 
-from tests.workers.planning.audit.small_jobs import broken, generator, one_generator, only, outage, product, window
+from tests.workers.planning.audit.small_jobs import (
+    broken,
+    facts,
+    generator,
+    one_generator,
+    only,
+    outage,
+    product,
+    window,
+)
 
 UP = product()
 DOWN = product("down-15", direction="down")
@@ -54,6 +63,23 @@ def test_a_breach_names_what_binds() -> None:
         "MW",
     )
     assert result.totals.reserve_income == 3.75
+
+
+def test_a_breach_names_the_generator_its_interval_and_mw() -> None:
+    market = window([0.0, 0.0], reserve_products=[UP, DOWN])
+    # 4 MW at most leave 0.5 MW above 3.5 MW; 1 MW at least leaves 0.5 MW below 1.5 MW.
+    found = only(one_generator([2.0, 3.5], window=market, reserve_mw={"up-15": [0.0, 0.75]}))
+    assert facts(found) == ("reserve_up_power", "/fleet/assets/0/max_output_mw", "quay-g1", 1, 0.25, "MW")
+    found = only(one_generator([2.0, 1.5], window=market, reserve_mw={"down-15": [0.0, 0.75]}))
+    assert facts(found) == ("reserve_down_power", "/fleet/assets/0/min_output_mw", "quay-g1", 1, 0.25, "MW")
+    found = only(one_generator([2.0, 0.0], window=market, reserve_mw={"up-15": [0.0, 0.5]}))
+    assert facts(found) == ("reserve_off", "/fleet/assets/0", "quay-g1", 1, 0.5, "MW")
+
+
+def test_a_generator_beyond_its_limits_without_reserve_breaks_its_own_rules_only() -> None:
+    market = window([0.0], reserve_products=[UP, DOWN])
+    assert broken(one_generator([4.5], window=market, reserve_mw={"up-15": [0.0]})) == ["max_output"]
+    assert broken(one_generator([0.5], window=market, reserve_mw={"down-15": [0.0]})) == ["min_output"]
 
 
 def test_ramps_do_not_bind_reserve() -> None:

@@ -7,6 +7,7 @@ import pytest
 from tests.workers.planning.audit.small_jobs import (
     Document,
     broken,
+    facts,
     generator,
     one_generator,
     only,
@@ -37,7 +38,7 @@ def test_a_generator_stays_off_for_its_minimum_down_time() -> None:
     asset = generator(min_down_hours=2.0)
     assert broken(on_in("x..x", asset=asset)) == []
     found = only(on_in("xx.x", asset=asset))
-    assert (found.rule, found.pointer, found.amount) == ("min_down", "/fleet/assets/0/min_down_hours", 1.0)
+    assert facts(found) == ("min_down", "/fleet/assets/0/min_down_hours", "quay-g1", 3, 1.0, "h")
 
 
 def test_times_are_rounded_up_to_whole_intervals() -> None:
@@ -62,6 +63,16 @@ def test_the_state_before_the_window_binds_across_its_start() -> None:
     assert only(on_in(".xxx", off, down)).amount == 1.0
     # A begun interval does not count: 2.9 hours are two intervals gone.
     assert only(on_in(".xxx", {"on": False, "hours_in_state": 2.9}, down)).amount == 1.0
+
+
+def test_a_state_begun_within_the_hour_before_the_window_lasts_an_hour_in_it() -> None:
+    # Of the half hour before the window no whole interval has passed.
+    found = only(on_in("...", {"on": True, "hours_in_state": 0.5}, generator(min_up_hours=1.0)))
+    assert facts(found) == ("min_up", "/fleet/assets/0/min_up_hours", "quay-g1", 0, 1.0, "h")
+    assert broken(on_in("x..", {"on": True, "hours_in_state": 0.5}, generator(min_up_hours=1.0))) == []
+    found = only(on_in("xx.", {"on": False, "hours_in_state": 0.5}, generator(min_down_hours=1.0)))
+    assert facts(found) == ("min_down", "/fleet/assets/0/min_down_hours", "quay-g1", 0, 1.0, "h")
+    assert broken(on_in(".x.", {"on": False, "hours_in_state": 0.5}, generator(min_down_hours=1.0))) == []
 
 
 def test_a_state_of_unknown_length_lasted_long_enough() -> None:

@@ -10,12 +10,14 @@ from tests.workers.planning.audit.small_jobs import (
     audit,
     audit_decisions,
     broken,
+    facts,
     generator,
     job,
     load,
     one_generator,
     only,
     outage,
+    product,
     window,
 )
 from workers.planning.audit import Decision
@@ -76,6 +78,29 @@ def test_where_less_than_the_minimum_is_left_a_generator_is_off() -> None:
     assert broken(one_generator([0.0], [True], outages=[outage("quay-g1", 0, None)])) == ["must_be_off"]
 
 
+def test_where_it_must_be_off_its_output_is_no_breach_of_its_own() -> None:
+    # 0.8 MW are left, less than the 1 MW it needs: 2 MW there break one rule, not two.
+    assert broken(one_generator([2.0], outages=[outage("quay-g1", 0, None, 0.2)])) == ["must_be_off"]
+
+
+@pytest.mark.parametrize(
+    ("power", "on", "left", "rule", "where", "amount", "unit"),
+    [
+        (4.25, True, 1.0, "max_output", "/fleet/assets/0/max_output_mw", 0.25, "MW"),
+        (2.25, True, 0.5, "max_output", "/outages/0", 0.25, "MW"),
+        (0.75, True, 1.0, "min_output", "/fleet/assets/0/min_output_mw", 0.25, "MW"),
+        (1.0, True, 0.0, "must_be_off", "/outages/0", 1.0, "intervals"),
+        (0.5, False, 1.0, "off_with_output", "/fleet/assets/0", 0.5, "MW"),
+        (-0.5, False, 1.0, "off_with_output", "/fleet/assets/0", 0.5, "MW"),
+    ],
+)
+def test_a_breach_names_the_generator_its_interval_and_how_much_of_what(
+    power: float, on: bool, left: float, rule: str, where: str, amount: float, unit: str
+) -> None:
+    found = only(one_generator([1.0, power], [True, on], outages=[outage("quay-g1", 1, 2, left)]))
+    assert facts(found) == (rule, where, "quay-g1", 1, amount, unit)
+
+
 def test_a_generator_of_no_output_at_all_cannot_be_on() -> None:
     found = only(one_generator([0.0], [True], asset=generator(min_output_mw=0.0, max_output_mw=0.0)))
     assert (found.rule, found.pointer) == ("must_be_off", "/fleet/assets/0/max_output_mw")
@@ -131,6 +156,28 @@ def test_hostile_powers_of_a_generator_are_reported_and_never_raised(power: Any)
         result = audit_decisions(document, {"quay-g1": Decision(power, on)})
         assert broken(result)
         assert math.isfinite(result.margin)
+
+
+@pytest.mark.parametrize(
+    ("power", "on", "reserve", "rule", "hour", "unit"),
+    [
+        ([1.0, None], [True, False], {}, "decision_unreadable", 1, "values"),
+        ([1.0, 0.0], [True, 0], {}, "decision_unreadable", 1, "values"),
+        ([1.0, 0.0], [True], {}, "decision_length", None, "intervals"),
+        ([1.0, 0.0], None, {"up-7": [0.0, 0.0]}, "reserve_product_unknown", None, "products"),
+    ],
+)
+def test_what_cannot_be_read_of_a_generators_decision_names_it(
+    power: Any, on: Any, reserve: Any, rule: str, hour: int | None, unit: str
+) -> None:
+    found = only(one_generator(power, on, reserve_mw=reserve))
+    assert facts(found) == (rule, "/fleet/assets/0", "quay-g1", hour, 1.0, unit)
+
+
+def test_a_generator_holds_its_own_products_only() -> None:
+    market = window([0.0], reserve_products=[product()])
+    found = only(one_generator([1.0], asset=generator(reserve_products=[]), window=market, reserve_mw={"up-15": [0.5]}))
+    assert facts(found) == ("reserve_not_allowed", "/fleet/assets/0/reserve_products", "quay-g1", 0, 0.5, "MW")
 
 
 def test_three_plants_that_share_a_load_at_least_cost() -> None:
