@@ -10,6 +10,7 @@ from tests.workers.planning.audit.small_jobs import (
     audit,
     audit_decisions,
     broken,
+    facts,
     flexible_load,
     job,
     only,
@@ -85,6 +86,44 @@ def test_a_load_that_draws_draws_its_minimum() -> None:
     assert (found.rule, found.pointer, found.amount) == ("min_draw", "/fleet/assets/0/min_draw_mw", 0.25)
 
 
+def test_a_load_that_draws_up_to_a_millionth_of_a_mw_is_idle() -> None:
+    assert broken(draws([0.5, 1e-6], [need(0.500001)], min_draw_mw=0.5)) == []
+    assert broken(draws([0.5, 0.0, 1e-6], [need(0.500001)], min_draw_mw=0.5, interruptible=False)) == []
+
+
+@pytest.mark.parametrize(
+    ("draw", "needs", "members", "rule", "where", "hour", "amount", "unit"),
+    [
+        ([0.0, 2.25], [need(2.25)], {}, "draw_limit", "/fleet/assets/0/draw_limit_mw", 1, 0.25, "MW"),
+        ([1.5, -0.5], [need(1.0)], {}, "feeds_power", "/fleet/assets/0", 1, 0.5, "MW"),
+        ([1.0, 0.75], [need(1.75)], {"min_draw_mw": 1.0}, "min_draw", "/fleet/assets/0/min_draw_mw", 1, 0.25, "MW"),
+        ([1.0, 0.25], [need(1.0, None, 1)], {}, "outside_needs", "/energy_needs/quay-pumps", 1, 0.25, "MW"),
+        ([1.0, 0.5], [need(2.0)], {}, "energy_need", "/energy_needs/quay-pumps/0/energy_mwh", None, 0.5, "MWh"),
+        (
+            [1.0, 0.0, 0.5],
+            [need(1.5)],
+            {"min_draw_mw": 0.5, "interruptible": False},
+            "interruptible",
+            "/fleet/assets/0/interruptible",
+            2,
+            1.0,
+            "breaks",
+        ),
+    ],
+)
+def test_a_breach_names_the_load_its_interval_and_how_much_of_what(
+    draw: list[float],
+    needs: list[Document],
+    members: Document,
+    rule: str,
+    where: str,
+    hour: int | None,
+    amount: float,
+    unit: str,
+) -> None:
+    assert facts(only(draws(draw, needs, **members))) == (rule, where, "quay-pumps", hour, amount, unit)
+
+
 def test_an_outage_scales_the_limit_and_not_the_minimum() -> None:
     outages = [outage("quay-pumps", 0, 1, 0.5)]
     assert broken(draws([1.0, 2.0], [need(3.0)], outages=outages)) == []
@@ -122,7 +161,10 @@ def test_what_a_load_draws_is_bought() -> None:
 
 def test_a_load_without_a_decision_is_reported_and_leaves_its_need() -> None:
     document = job([flexible_load()], window([0.0]), energy_needs={"quay-pumps": [need(1.0)]})
-    assert broken(audit(document, {})) == ["decision_missing", "energy_need"]
+    result = audit(document, {})
+    assert broken(result) == ["decision_missing", "energy_need"]
+    found = result.verification.violations[0]
+    assert facts(found) == ("decision_missing", "/fleet/assets/0", "quay-pumps", None, 1.0, "intervals")
 
 
 @pytest.mark.parametrize("power", [[1e9, -1e9], [math.inf, 1.0], None, [1.0], "12"])

@@ -10,6 +10,7 @@ from tests.workers.planning.audit.small_jobs import (
     audit,
     audit_decisions,
     broken,
+    facts,
     job,
     only,
     outage,
@@ -41,14 +42,14 @@ def test_a_renewable_gives_up_to_its_forecast() -> None:
 
 
 def test_a_renewable_draws_nothing() -> None:
-    found = only(gives([-0.5]))
-    assert (found.rule, found.pointer, found.amount) == ("draws_power", "/fleet/assets/0", 0.5)
+    found = only(gives([0.0, -0.5]))
+    assert facts(found) == ("draws_power", "/fleet/assets/0", "quay-pv", 1, 0.5, "MW")
 
 
 def test_one_that_cannot_be_curtailed_gives_its_forecast() -> None:
     assert broken(gives([2.0], curtailable=False)) == []
-    found = only(gives([1.75], curtailable=False))
-    assert (found.rule, found.pointer, found.amount) == ("not_curtailable", "/fleet/assets/0/curtailable", 0.25)
+    found = only(gives([2.0, 1.75], curtailable=False))
+    assert facts(found) == ("not_curtailable", "/fleet/assets/0/curtailable", "quay-pv", 1, 0.25, "MW")
     assert broken(gives([2.25], curtailable=False)) == ["forecast"]
 
 
@@ -64,13 +65,17 @@ def test_what_it_gives_is_sold_and_costs_by_the_mwh() -> None:
     result = gives([2.0, 0.5], prices=[10.0, 20.0], cost_per_mwh=4.0)
     assert (result.totals.sales, result.totals.fuel_cost, result.margin) == (30.0, 10.0, 20.0)
     assert result.assets[0].totals.fuel_cost == 10.0
+    # 2 MW through a quarter of an hour are 0.5 MWh, at 4.
+    market = window([0.0], interval="PT15M")
+    document = job([renewable(cost_per_mwh=4.0)], market, forecasts={"quay-pv": 2.0})
+    assert audit(document, {"quay-pv": [2.0]}).totals.fuel_cost == 2.0
 
 
 @pytest.mark.parametrize(("curtailable", "taken"), [(True, [0.0, 0.0]), (False, [2.0, 1.0])])
 def test_a_renewable_without_a_decision_is_reported(curtailable: bool, taken: list[float]) -> None:
     document = job([renewable(curtailable=curtailable)], window([0.0, 0.0]), forecasts={"quay-pv": [2.0, 1.0]})
     result = audit(document, {})
-    assert only(result).rule == "decision_missing"
+    assert facts(only(result)) == ("decision_missing", "/fleet/assets/0", "quay-pv", None, 2.0, "intervals")
     assert result.assets[0].power_mw == taken
 
 

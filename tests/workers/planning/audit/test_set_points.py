@@ -1,5 +1,6 @@
 """Decisions that are missing, too short, too long or no numbers: reported, never raised."""
 
+import itertools
 import math
 from collections.abc import Sequence
 from typing import Any
@@ -7,7 +8,19 @@ from typing import Any
 import pytest
 
 from schemas.job import ScheduleAsset
-from tests.workers.planning.audit.small_jobs import audit, broken, job, load, only, read, store, window
+from tests.workers.planning.audit.small_jobs import (
+    audit,
+    broken,
+    facts,
+    generator,
+    job,
+    load,
+    one_generator,
+    only,
+    read,
+    store,
+    window,
+)
 from workers.planning.audit import Decision, Replay, replay
 
 
@@ -33,8 +46,8 @@ def test_a_missing_decision_is_reported_and_taken_as_idle() -> None:
 def test_a_wrong_number_of_powers_is_reported(power: list[float]) -> None:
     result = decided(power)
     found = only(result)
-    assert (found.rule, found.pointer, found.unit) == ("decision_length", "/fleet/assets/0", "intervals")
-    assert found.amount == abs(len(power) - 2)
+    missing = abs(len(power) - 2)
+    assert facts(found) == ("decision_length", "/fleet/assets/0", "quay-b1", None, missing, "intervals")
     assert len(result.assets[0].power_mw) == 2
 
 
@@ -44,9 +57,7 @@ def test_a_wrong_number_of_powers_is_reported(power: list[float]) -> None:
 def test_what_is_no_power_is_reported_and_taken_as_idle(power: Any) -> None:
     result = decided([1.0, power])
     found = only(result)
-    assert (found.rule, found.amount, found.unit) == ("decision_unreadable", 1.0, "values")
-    assert found.interval_start is not None
-    assert found.interval_start.hour == 1
+    assert facts(found) == ("decision_unreadable", "/fleet/assets/0", "quay-b1", 1, 1.0, "values")
     assert result.assets[0].power_mw == [1.0, 0.0]
     assert result.margin == 50.0
 
@@ -63,6 +74,16 @@ def test_the_largest_power_of_the_contract_is_read_and_breaks_what_it_breaks() -
     result = decided([1e9, -1e9])
     assert broken(result) == ["discharge_limit", "charge_limit", "min_stored"]
     assert math.isfinite(result.margin)
+
+
+def test_the_largest_power_is_read_beside_what_is_none() -> None:
+    assert decided([1e9, None]).assets[0].power_mw == [1e9, 0.0]
+
+
+def test_states_that_have_no_length_are_not_waited_for() -> None:
+    endless: Any = itertools.repeat(True)
+    found = only(one_generator([1.0, 0.0], endless))
+    assert facts(found) == ("decision_length", "/fleet/assets/0", "quay-g1", None, 2.0, "intervals")
 
 
 def test_a_store_of_next_to_no_efficiency_ends_in_no_infinity() -> None:
@@ -105,10 +126,10 @@ def test_reserve_of_a_product_the_window_does_not_have_is_reported() -> None:
 
 
 def test_an_unreadable_power_of_a_load_is_reported_and_taken_as_its_forecast() -> None:
-    document = job([load()], window([0.0, 0.0]), forecasts={"quay-cranes": 0.5})
-    result = audit(document, {"quay-cranes": [-0.5, math.nan]})
-    assert broken(result) == ["decision_unreadable"]
-    assert result.assets[0].power_mw == [-0.5, -0.5]
+    document = job([generator(), load()], window([0.0, 0.0]), forecasts={"quay-cranes": 0.5})
+    result = audit(document, {"quay-g1": [0.0, 0.0], "quay-cranes": [-0.5, math.nan]})
+    assert facts(only(result)) == ("decision_unreadable", "/fleet/assets/1", "quay-cranes", 1, 1.0, "values")
+    assert result.assets[1].power_mw == [-0.5, -0.5]
 
 
 def test_a_schedule_sent_for_a_check_is_replayed_as_it_stands() -> None:
