@@ -79,6 +79,8 @@ def test_an_islanded_site_keeps_its_reserve_to_itself() -> None:
     assert broken(quay([0.5], {"both": [0.5]}, island)) == ["export_limit"]
     assert broken(quay([0.0], {"both": [1.0]}, {"export_limit_mw": 0.0})) == ["reserve_export"]
     assert broken(quay([0.0], {"both": [1.0]}, {"export_limit_mw": 0.0, "import_limit_mw": 1.0})) == ["reserve_export"]
+    # 1 MW of up-reserve beside the other store's 0.5 MW.
+    assert broken(quay([0.0], {"up-15": [1.0]}, {"export_limit_mw": 1.0, "import_limit_mw": 0.0})) == ["reserve_export"]
 
 
 def test_a_site_is_islanded_in_the_intervals_in_which_both_limits_are_nothing() -> None:

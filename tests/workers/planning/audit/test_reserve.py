@@ -9,6 +9,7 @@ from tests.workers.planning.audit.small_jobs import (
     Document,
     audit_decisions,
     broken,
+    facts,
     flexible_load,
     generator,
     job,
@@ -51,8 +52,11 @@ def test_one_figure_stands_for_all_intervals() -> None:
 
 
 def test_reserve_below_nothing_is_reported() -> None:
-    found = only(holds({"up-15": [0.0, -0.5, 0.0, 0.0]}, product(price_per_mw_per_hour=1.0)))
-    assert (found.rule, found.asset, found.amount, found.unit) == ("reserve_negative", "quay-b1", 0.5, "MW")
+    result = holds({"up-15": [0.25, -0.5, 0.0, 0.0]}, product(price_per_mw_per_hour=1.0))
+    assert facts(only(result)) == ("reserve_negative", "/fleet/assets/0", "quay-b1", 1, 0.5, "MW")
+    # It counts as none and takes nothing back.
+    assert result.assets[0].reserve_mw == {"up-15": [0.25, 0.0, 0.0, 0.0]}
+    assert result.totals.reserve_income == 0.25
     assert broken(holds({"up-15": [0.0, -1e-6, 0.0, 0.0]})) == []
 
 
@@ -60,15 +64,13 @@ def test_an_asset_holds_its_own_products_only() -> None:
     products = (product(price_per_mw_per_hour=1.0), product("down-60", direction="down"))
     asset = store(reserve_products=["down-60"])
     assert broken(holds({"down-60": [1.0] * 4}, *products, asset=asset)) == []
-    result = holds({"up-15": [0.0, 1.0, 0.0, 0.0]}, *products, asset=asset)
-    found = only(result)
-    assert (found.rule, found.pointer, found.amount) == (
-        "reserve_not_allowed",
-        "/fleet/assets/0/reserve_products",
-        1.0,
-    )
+    result = holds({"up-15": [1e-6, 1.0, 0.0, 0.0]}, *products, asset=asset)
+    # Up to 1e-6 MW is none: what is not allowed begins in the second hour.
+    where = "/fleet/assets/0/reserve_products"
+    assert facts(only(result)) == ("reserve_not_allowed", where, "quay-b1", 1, 1.0, "MW")
     assert result.totals.reserve_income == 0.0
     assert broken(holds({"up-15": [0.0] * 4}, *products, asset=asset)) == []
+    assert broken(holds({"up-15": [1e-6] * 4}, *products, asset=asset)) == []
     assert broken(holds({"up-15": [1.0] * 4}, *products, asset=store(reserve_products=[]))) == ["reserve_not_allowed"]
 
 
@@ -88,15 +90,18 @@ def test_reserve_is_constant_within_each_block() -> None:
     up = product(block_hours=2.0)
     assert broken(holds({"up-15": [1.0, 1.0, 0.5, 0.5]}, up)) == []
     found = only(holds({"up-15": [1.0, 1.0, 0.5, 0.75]}, up))
-    assert (found.rule, found.pointer, found.asset, found.amount) == (
-        "reserve_block",
-        "/window/reserve_products/0/block_hours",
-        "quay-b1",
-        0.25,
-    )
-    assert found.interval_start is not None
-    assert found.interval_start.hour == 3
+    assert facts(found) == ("reserve_block", "/window/reserve_products/0/block_hours", "quay-b1", 3, 0.25, "MW")
     assert broken(holds({"up-15": [1.0, 0.5, 1.0, 0.75]}, product())) == []
+
+
+def test_a_block_is_constant_to_a_millionth_of_a_mw() -> None:
+    up = product(block_hours=4.0)
+    result = holds({"up-15": [0.0, 1e-6, 0.0, 0.0]}, up)
+    assert broken(result) == []
+    assert result.verification.largest_residual == 1e-6
+    found = only(holds({"up-15": [0.0, 1e-6, 0.5, 0.0]}, up))
+    where = "/window/reserve_products/0/block_hours"
+    assert facts(found) == ("reserve_block", where, "quay-b1", 2, 0.5, "MW")
 
 
 def test_blocks_count_from_local_midnight_and_a_cut_block_is_constant_in_what_is_left() -> None:
@@ -157,6 +162,13 @@ def test_hostile_reserve_is_reported_and_never_raised(held: Any) -> None:
         assert math.isfinite(result.margin)
     document = job([generator()], window([0.0] * 4, reserve_products=[symmetric]))
     assert broken(audit_decisions(document, {"quay-g1": Decision([2.0] * 4, reserve_mw=held)}))
+
+
+def test_reserve_that_is_no_figure_is_reported_and_counts_as_none() -> None:
+    result = holds({"up-15": [0.5, math.nan, 0.5, 0.5]}, product(price_per_mw_per_hour=1.0))
+    assert facts(only(result)) == ("decision_unreadable", "/fleet/assets/0", "quay-b1", 1, 1.0, "values")
+    assert result.assets[0].reserve_mw == {"up-15": [0.5, 0.0, 0.5, 0.5]}
+    assert result.totals.reserve_income == 1.5
 
 
 def test_a_product_the_window_does_not_have_is_named() -> None:

@@ -74,6 +74,7 @@ def test_less_reserve_than_due_breaks_it_in_that_interval() -> None:
     assert found.interval_start.hour == 1
     assert "0.75 MW of up-15" in found.text
     assert (result.commitments[0].delivered_mw_hours, result.commitments[0].met) == (1.75, False)
+    assert result.totals.shortfall_cost == 0.0
 
 
 def test_each_asset_holds_its_own() -> None:
@@ -114,6 +115,12 @@ def test_rows_are_days_and_what_was_counted_before_makes_up_for_nothing() -> Non
         ("2027-03-11", 1.0, 0.5),
     ]
     assert result.totals.shortfall_cost == 12.5
+
+
+def test_what_was_counted_before_may_be_told_by_asset() -> None:
+    row = promise(1.0, applies_to={"assets": ["quay-b1", "quay-g1"]})
+    result = quay([1.0], [1.0], row, counted_before={"commitments": {"spin": {"quay-g1": 3.0}}})
+    assert [(row.asset, row.delivered_mw_hours) for row in result.commitments] == [("quay-b1", 1.0), ("quay-g1", 4.0)]
 
 
 def test_reserve_that_may_not_be_held_counts_for_nothing() -> None:
