@@ -25,6 +25,7 @@ def test_a_refusal_can_be_made_anew_from_its_arguments() -> None:
     fault = refused(job([store()], window([0.0]), task="reschedule", previous_job_id="j1"))
     twin = copy.copy(fault)  # made anew from the exception's arguments, as unpickling does
     assert (twin.what, twin.pointer) == (fault.what, fault.pointer)
+    assert fault.args == (fault.what, fault.pointer)
 
 
 def test_fleet_and_window_must_be_inline() -> None:

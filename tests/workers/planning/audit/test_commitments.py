@@ -62,6 +62,12 @@ def test_a_millionth_of_a_mw_below_the_threshold_counts_and_is_remembered() -> N
     assert broken(one_store([1.0, 0.999998], commitments=[promise()])) == ["hours_at_least"]
 
 
+def test_power_just_at_the_edge_of_tolerance_counts_and_is_remembered() -> None:
+    result = one_store([1.0 - 1e-6], commitments=[promise(hours=1.0)])
+    assert broken(result) == []
+    assert result.verification.largest_residual == pytest.approx(1e-6)
+
+
 def test_a_priced_shortfall_is_paid_and_breaks_nothing() -> None:
     result = one_store([1.0, 0.0], commitments=[promise(hours=1.5, shortfall_price_per_hour=80.0)])
     assert broken(result) == []
@@ -106,7 +112,7 @@ def test_charging_counts_as_its_own_direction_at_its_own_rated_power() -> None:
     asset = store(charge_limit_mw=1.5)
     row = promise(direction="charge", threshold={"fraction_of_rated": 0.5}, hours=1.0)
     assert broken(one_store([-0.75], asset=asset, commitments=[row])) == []
-    assert broken(one_store([-0.7], asset=asset, commitments=[row])) == ["hours_at_least"]
+    assert "quay-b1 charges 0.75 MW or more" in only(one_store([-0.7], asset=asset, commitments=[row])).text
     assert broken(one_store([1.0], asset=asset, commitments=[row])) == ["hours_at_least"]
 
 
@@ -301,3 +307,8 @@ def test_credit_goes_to_the_first_stretch_that_is_a_row() -> None:
     rows = delivered([1.0] * 30, market, each_day=True, between=["18:00", "21:00"], counted_before=counted)
     # The 10th's stretch began before the window; the 11th's has three hours.
     assert rows == [3.5]
+
+
+def test_between_that_ends_when_it_begins_lasts_to_the_next_day() -> None:
+    # From 16:00 to 16:00: the 10th's 24 h and 8 h of the 11th's, cut off; the 9th's began before the window.
+    assert delivered([1.0] * 48, window([0.0] * 48), each_day=True, between=["16:00", "16:00"]) == [24.0, 8.0]

@@ -42,6 +42,7 @@ def test_as_much_energy_as_asked_holds_and_less_breaks() -> None:
     )
     assert found.text == "energy: quay-b1 discharges 1.25 MWh, 0.25 MWh short of 1.5 MWh"
     assert (result.commitments[0].delivered_mwh, result.commitments[0].met) == (1.25, False)
+    assert result.totals.shortfall_cost == 0.0
 
 
 def test_as_much_energy_as_allowed_holds_and_more_breaks() -> None:

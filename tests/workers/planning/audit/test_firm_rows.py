@@ -43,6 +43,7 @@ def test_less_power_than_due_breaks_it_in_that_interval() -> None:
     assert result.verification.violations[1].amount == 1.0
     row = result.commitments[0]
     assert (row.required_mwh, row.delivered_mwh, row.met) == (3.0, 1.75, False)
+    assert result.totals.shortfall_cost == 0.0
 
 
 def test_a_millionth_of_a_mw_less_is_let_pass() -> None:
@@ -50,6 +51,13 @@ def test_a_millionth_of_a_mw_less_is_let_pass() -> None:
     assert broken(result) == []
     assert result.verification.largest_residual == pytest.approx(5e-7)
     assert broken(one_store([0.999998], commitments=[promise(1.0)])) == ["firm_delivery"]
+
+
+def test_just_a_millionth_of_a_mw_less_is_met_and_beside_more_is_no_breach() -> None:
+    result = one_store([0.0, 1.0], commitments=[promise([1e-6, 1.0])])
+    assert (broken(result), result.commitments[0].met) == ([], True)
+    assert result.verification.largest_residual == 1e-6
+    assert only(one_store([0.0, 0.0], commitments=[promise([1e-6, 1.0])])).amount == 1.0
 
 
 def test_nothing_is_due_in_excused_intervals_nor_outside_its_borders() -> None:
@@ -87,7 +95,9 @@ def test_each_day_is_a_row_of_its_own() -> None:
 
 def test_charging_may_be_firm() -> None:
     assert broken(one_store([-1.0], commitments=[promise(1.0, direction="charge")])) == []
-    assert only(one_store([-0.5], commitments=[promise(1.0, direction="charge")])).amount == 0.5
+    found = only(one_store([-0.5], commitments=[promise(1.0, direction="charge")]))
+    assert found.amount == 0.5
+    assert "quay-b1 charges 0.5 MW" in found.text
 
 
 @pytest.mark.parametrize("over", [{"fleet": True}, {"site": "quay"}, {"group": ["g1", "pv", "cranes"]}])

@@ -32,6 +32,12 @@ def test_a_lot_is_held_to_a_millionth() -> None:
     assert broken(audit(document, {"quay-b1": [0.300002]})) == ["lot"]
 
 
+def test_what_counts_as_idle_is_no_part_of_a_lot_and_is_remembered() -> None:
+    result = audit(job([store()], window([0.0]), fleet={"lot_mw": 1.0}), {"quay-b1": [1e-6]})
+    assert broken(result) == []
+    assert result.verification.largest_residual == 1e-6
+
+
 def test_a_large_lot_is_held_to_a_millionth_of_the_power() -> None:
     large = store(discharge_limit_mw=200.0, energy_capacity_mwh=500.0)
     document = job([large], window([0.0]), initial={"quay-b1": {"stored_mwh": 400.0}}, fleet={"lot_mw": 50.0})

@@ -101,6 +101,13 @@ def test_fees_follow_metered_power_not_the_position() -> None:
     assert result.margin == -9.5
 
 
+def test_a_little_exported_lowers_no_import_fee() -> None:
+    sites = [{"id": "quay", "import_fee_per_mwh": 3.0}]
+    document = job([store(site="quay")], window([0.0] * 2), sites=sites)
+    # 1 MWh imported at 3; the 0.5 MWh exported pay nothing and give nothing back.
+    assert audit(document, {"quay-b1": [-1.0, 0.5]}).totals.fees == 3.0
+
+
 @pytest.mark.parametrize(("before", "charge"), [(None, 250.0), (1.0, 150.0), (2.5, 0.0), (4.0, 0.0)])
 def test_the_peak_is_charged_where_it_passes_the_months_so_far(before: float | None, charge: float) -> None:
     counted = {} if before is None else {"sites": {"quay": {"peak_import_mw": before}}}
