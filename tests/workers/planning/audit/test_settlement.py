@@ -67,6 +67,14 @@ def test_settled_as_a_fleet_meters_are_netted_and_the_money_stands_at_the_fleet(
     assert result.margin == 18.5
 
 
+def test_what_the_fleet_buys_as_one_stands_at_the_fleet() -> None:
+    market = window(buy_price_per_mwh=[40.0], sell_price_per_mwh=[30.0], settled_at="fleet")
+    result = audit(job([store(), store("mole-b1")], market), {"quay-b1": [-2.0], "mole-b1": [0.5]})
+    # 1.5 MW net at 40.
+    assert money(result.totals) == {"purchases": 60.0}
+    assert (result.fleet.totals.purchases, result.margin) == (60.0, -60.0)
+
+
 @pytest.mark.parametrize(
     ("power", "position", "sales", "purchases"),
     [
