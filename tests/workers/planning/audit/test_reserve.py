@@ -171,7 +171,14 @@ def test_reserve_that_is_no_figure_is_reported_and_counts_as_none() -> None:
     assert result.totals.reserve_income == 1.5
 
 
-def test_a_product_the_window_does_not_have_is_named() -> None:
-    found = only(holds({"up-99": [1.0] * 4}))
-    assert (found.rule, found.amount) == ("reserve_product_unknown", 1.0)
+def test_reserve_that_is_no_list_of_products_is_reported_once() -> None:
+    found = only(holds(["up-15"]))
+    assert facts(found) == ("decision_unreadable", "/fleet/assets/0", "quay-b1", None, 1.0, "values")
+
+
+def test_a_product_the_window_does_not_have_is_named_and_leaves_the_others() -> None:
+    result = holds({"up-99": [1.0] * 4, "up-15": [0.5] * 4}, product(price_per_mw_per_hour=1.0))
+    found = only(result)
+    assert facts(found) == ("reserve_product_unknown", "/fleet/assets/0", "quay-b1", None, 1.0, "products")
     assert "'up-99'" in found.text
+    assert result.totals.reserve_income == 2.0
