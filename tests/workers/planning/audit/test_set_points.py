@@ -1,6 +1,5 @@
 """Decisions that are missing, too short, too long or no numbers: reported, never raised."""
 
-import itertools
 import math
 from collections.abc import Sequence
 from typing import Any
@@ -80,9 +79,11 @@ def test_the_largest_power_is_read_beside_what_is_none() -> None:
     assert decided([1e9, None]).assets[0].power_mw == [1e9, 0.0]
 
 
-def test_states_that_have_no_length_are_not_waited_for() -> None:
-    endless: Any = itertools.repeat(True)
-    found = only(one_generator([1.0, 0.0], endless))
+def test_what_has_no_length_may_have_no_end_and_is_not_read() -> None:
+    found = only(decided(iter([1.0, -1.0])))
+    assert facts(found) == ("decision_length", "/fleet/assets/0", "quay-b1", None, 2.0, "intervals")
+    states: Any = iter([True, False])
+    found = only(one_generator([1.0, 0.0], states))
     assert facts(found) == ("decision_length", "/fleet/assets/0", "quay-g1", None, 2.0, "intervals")
 
 
