@@ -141,5 +141,9 @@ def test_each_product_and_each_block_of_reserve_is_a_check_and_so_is_each_lot() 
         held = one_generator([1.0] * 4, window=market, reserve_mw={"up-15": [0.5] * 4}).verification.checks
         # The product and its room in each interval; while on, that it is off asks nothing.
         assert held == bare + 1 + 4 + more
+    # Where none is held its room asks nothing.
+    market = window([0.0] * 4, reserve_products=[product()])
+    held = one_generator([1.0] * 4, window=market, reserve_mw={"up-15": [0.0, 0.5, 0.5, 0.5]}).verification.checks
+    assert held == bare + 1 + 3
     idle = one_store([0.0, 0.0]).verification.checks
     assert one_store([0.0, 0.0], fleet={"lot_mw": 1.0}).verification.checks == idle + 2
