@@ -136,7 +136,8 @@ def test_each_row_and_each_interval_in_which_something_is_due_is_a_check(
 
 def test_each_product_and_each_block_of_reserve_is_a_check_and_so_is_each_lot() -> None:
     bare = one_generator([1.0] * 4).verification.checks
-    for block_hours, more in ((None, 0), (2.0, 2)):
+    # A block of one interval asks nothing.
+    for block_hours, more in ((None, 0), (1.0, 0), (2.0, 2)):
         market = window([0.0] * 4, reserve_products=[product(block_hours=block_hours)])
         held = one_generator([1.0] * 4, window=market, reserve_mw={"up-15": [0.5] * 4}).verification.checks
         # The product and its room in each interval; while on, that it is off asks nothing.

@@ -116,7 +116,7 @@ def test_a_decision_for_an_unknown_asset_is_reported() -> None:
     document = job([store()], window([0.0]))
     result = audit(document, {"quay-b1": [0.0], "mole-b9": [1.0]})
     found = only(result)
-    assert (found.rule, found.pointer, found.amount) == ("asset_unknown", "/fleet/assets", 1.0)
+    assert facts(found) == ("asset_unknown", "/fleet/assets", None, None, 1.0, "assets")
     assert "mole-b9" in found.text
     assert result.fleet.power_mw == [0.0]
 
