@@ -35,6 +35,9 @@ def test_each_interval_of_a_limit_is_a_check() -> None:
     assert (ledger.checks, told) == (3, [2])
     ledger.at_most([1.0, 2.0, 3.0], [1.0, float("inf"), 3.0], lambda t, _: told.append(t))
     assert (ledger.checks, told) == (5, [2])
+    # An infinite limit is no check beside a broken one either.
+    ledger.at_most([1.0, 2.0, 4.0], [1.0, float("inf"), 3.0], lambda t, _: told.append(t))
+    assert (ledger.checks, told) == (7, [2, 2])
 
 
 def test_a_tolerance_grows_with_the_limit_from_one_up() -> None:
