@@ -225,7 +225,7 @@ def _runs(
     """Hold minimum run and rest times and the starts per day, across the window's start and cut off at its end."""
     run, rest = (clock.whole(given(asset, key, 0.0)) for key in ("min_run_hours", "min_rest_hours"))
     most = given(asset, "max_starts_per_day")
-    if run <= 1 and rest == 0 and most is None:
+    if run == 0 and rest == 0 and most is None:
         return
     count = len(clock)
     begins: list[Affine] = [Affine({}) for _ in range(count)]

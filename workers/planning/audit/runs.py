@@ -46,14 +46,14 @@ def check_runs(one: StoreCase) -> None:
     """Check run times, rest times and starts of one store, as far as it has any."""
     shortest_run = one.case.clock.intervals_needed(one.store.min_run_hours)
     shortest_rest = one.case.clock.intervals_needed(one.store.min_rest_hours)
-    if shortest_run <= 1 and shortest_rest <= 0 and one.store.max_starts_per_day is None:
+    if shortest_run <= 0 and shortest_rest <= 0 and one.store.max_starts_per_day is None:
         return
     runs = runs_of(one.power_mw)
     direction = direction_of(one.start.power_mw)
     goes_on = bool(runs) and runs[0].first == 0 and runs[0].direction == direction
     under_way = Run(direction, 0, runs[0].end if goes_on else 0)
     begun = runs[1:] if goes_on else runs
-    if shortest_run > 1:
+    if shortest_run > 0:
         _check_run_times(one, under_way, begun, shortest_run)
     if shortest_rest > 0:
         _check_rest_times(one, under_way, begun, shortest_rest)

@@ -27,7 +27,8 @@ from workers.planning.store import Store
 def add(model: Model, columns: StoreColumns) -> None:
     """Add runs, rests and starts of one store; nothing for a store without on-off columns."""
     store, states = columns.unit, columns.states
-    if states is None or (store.min_run <= 1 and store.min_rest == 0 and not store.start_allowances):
+    asks_nothing = store.min_run <= 1 and store.min_rest == 0 and not store.start_allowances
+    if states is None or (asks_nothing and store.held_intervals == 0):
         return
     begins_d = _starts(model, states.discharging, store.can_discharge, was_on=store.direction_before > 0)
     begins_c = _starts(model, states.charging, store.can_charge, was_on=store.direction_before < 0)

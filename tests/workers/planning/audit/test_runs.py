@@ -112,6 +112,13 @@ def test_hours_before_the_window_count_in_whole_intervals() -> None:
     assert found.amount == 0.75
 
 
+def test_a_run_of_one_interval_that_is_under_way_is_finished() -> None:
+    asset = runner(min_run_hours=1)
+    assert broken(one_store([1.0, 0.0], asset=asset, initial=before(1.0, 0.5))) == []
+    found = only(one_store([0.0, 0.0], asset=asset, initial=before(1.0, 0.5)))
+    assert facts(found) == ("min_run", "/fleet/assets/0/min_run_hours", "quay-b1", 0, 1.0, "h")
+
+
 def test_a_run_under_way_for_an_unknown_time_may_stop() -> None:
     assert broken(one_store([0.0, 0.0], asset=runner(min_run_hours=3), initial=before(-1.0))) == []
 

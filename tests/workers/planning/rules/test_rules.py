@@ -119,6 +119,12 @@ def test_a_run_under_way_is_kept_up_until_it_has_lasted() -> None:
     assert power_of(planned(document), "quay-b1") == pytest.approx([0.5, 0.5, 0.0])
 
 
+def test_a_run_of_one_interval_that_is_under_way_is_finished() -> None:
+    document = job([-10.0] * 2, runner(min_run_hours=1, charge_limit_mw=0.0, min_charge_mw=0.0), stored=8.0)
+    document["initial"]["quay-b1"] |= {"power_mw": 0.5, "hours_in_state": 0.5}
+    assert power_of(planned(document), "quay-b1") == pytest.approx([0.5, 0.0])
+
+
 def test_a_trip_ends_a_run_before_its_least_time() -> None:
     outage = {"asset": "quay-b1", "kind": "forced", "from": at(1), "to": at(2), "available_fraction": 0.0}
     steady = runner(min_run_hours=3, charge_limit_mw=0.0, min_charge_mw=0.0)
