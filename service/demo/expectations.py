@@ -9,11 +9,11 @@ from typing import Any
 from schemas.commitments import HoursAtLeast
 from schemas.diagnosis import Diagnosis, Repair
 from schemas.job import ScheduleJob
+from schemas.json_patch import PatchRefused, patched
 from schemas.problems import InvalidRequest
 from schemas.reading import read_job
 from schemas.schedule import Schedule
 from service.demo.commitments_text import threshold_mw
-from service.demo.json_patch import PatchRefused, patched
 from service.demo.money_text import ledger, whole
 
 SAME_MONEY = 1e-6

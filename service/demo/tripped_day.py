@@ -1,8 +1,9 @@
 """The day that cannot be met: why, how far, the ways out, and the best of them applied and sent again."""
 
+from schemas import json_patch
 from schemas.diagnosis import Diagnosis, Repair
 from schemas.schedule import Schedule
-from service.demo import expectations, json_patch, scenario
+from service.demo import expectations, scenario
 from service.demo.commitments_text import commitments_text, notes_text
 from service.demo.diagnosis_text import attainable_text, conflicts_text, nearest_text, outages_text, without_text
 from service.demo.money_text import difference_text

@@ -20,7 +20,7 @@ from workers.planning.earlier import earlier_of
 from workers.planning.extraction import decision_of
 from workers.planning.instance import Instance, instance_of
 from workers.planning.limits import Limits, Unwatched, Watch
-from workers.planning.methods import Choice, Found, choose, solve
+from workers.planning.methods import Found, choose, solve
 from workers.planning.pricing.report import limits_to_search, prices_of, with_prices
 from workers.planning.proof import Audited, PlanningError, audited, decisions_of
 from workers.planning.screening import screen
@@ -69,14 +69,12 @@ def _schedule(job: ScheduleJob | CommitmentCostsJob, proof: Audited, limits: Lim
     is_optimal = gap is not None and (
         gap <= job.absolute_gap or answer.relative_gap(replayed, replayed.margin + gap) <= job.relative_gap * (1 + 1e-6)
     )
-    return answer.schedule(
-        job, replayed, "optimal" if is_optimal else "feasible", bound, _effort(proof.found.choice, proof.found, limits)
-    )
+    return answer.schedule(job, replayed, "optimal" if is_optimal else "feasible", bound, _effort(proof.found, limits))
 
 
-def _effort(choice: Choice, found: Found, limits: Limits) -> answer.Effort:
+def _effort(found: Found, limits: Limits) -> answer.Effort:
     return answer.Effort(
-        method=choice.method,
+        method=found.choice.method,
         why=found.why,
         threads=limits.threads,
         solver_seconds=sum(solution.solver_seconds for solution in found.solutions),
@@ -92,7 +90,7 @@ def _diagnosed(
     watch.more_time(again.seconds)
     solving = Solving(again, watch, job.seed, again.clock() + again.left_to_solve())
 
-    def planned(changed: ScheduleJob, _: Choice, found: Found) -> Schedule:
+    def planned(changed: ScheduleJob, found: Found) -> Schedule:
         return _schedule(changed, audited(changed, found, again, watch), again)
 
     proven = [tuple(unit.id for unit in part.units) for part in infeasible]
@@ -109,7 +107,7 @@ def _nearest(job: ScheduleJob, found: Findings, limits: Limits) -> tuple[Nearest
     replayed = replay(near.job, decisions_of(near.found))
     if violations := replayed.verification.violations:
         return None, f"The audit refuses the one that was found, a fault of the planner: {violations[0].text}."
-    effort = _effort(near.choice, near.found, limits)
+    effort = _effort(near.found, limits)
     return nearest_schedule(answer.schedule(job, replayed, "infeasible", None, effort), near.missing), None
 
 
@@ -121,7 +119,7 @@ def _undecided(job: ScheduleJob | CommitmentCostsJob, found: Found, limits: Limi
         for unit, planned in zip(part.units, solution.plans or [nothing] * len(part.units), strict=True):
             decisions[unit.id] = decision_of(part, unit, planned)
     bound = found.bound if isfinite(found.bound) else None
-    attempt = answer.schedule(job, replay(job, decisions), "violated", bound, _effort(found.choice, found, limits))
+    attempt = answer.schedule(job, replay(job, decisions), "violated", bound, _effort(found, limits))
     summary = f"{limits.seconds:g} s were not enough to find a schedule or to prove that there is none."
     return answer.undecided(job, summary, bound, attempt)
 

@@ -20,7 +20,7 @@ SHARE = 0.05
 LEAST_SECONDS = 1.0
 """A part may take this share of the time left, or so many seconds; what it has found by then is planned."""
 
-Audited = Callable[[ScheduleJob, Choice, Found], Schedule]
+Audited = Callable[[ScheduleJob, Found], Schedule]
 
 
 class Planner:
@@ -46,21 +46,25 @@ class Planner:
                 raise solving.cut_short()
             solutions.append(solution)
         try:
-            return self._audited(job, choice_of(parts), Found(choice_of(parts), tuple(solutions)))
+            return self._audited(job, Found(choice_of(parts), tuple(solutions)))
         except PlanningError:
             self.refused += 1
             return None
 
     def solution(self, part: Instance, solving: Solving, earlier: tuple[UnitPlan, ...] | None = None) -> Solution:
         """Solve a part, or remember what was found for the same one; begins from `earlier` plans. Raises CutShort."""
-        whose = tuple(unit.id for unit in part.units) + tuple(meter.id for meter in part.meters)
-        known = self._known.get(whose)
+        known = self._known.get(key_of(part))
         if known is not None and is_same(known[0], part):
             return known[1]
         solution = solving.solve(part, max(LEAST_SECONDS, SHARE * solving.seconds_left), earlier, is_plan=True)
         if solution.plans is not None:
-            self._known[whose] = (part, solution)
+            self._known[key_of(part)] = (part, solution)
         return solution
+
+
+def key_of(part: Instance) -> tuple[str, ...]:
+    """Name an independent part by its plants and meters."""
+    return tuple(unit.id for unit in part.units) + tuple(meter.id for meter in part.meters)
 
 
 def choice_of(parts: tuple[Instance, ...]) -> Choice:

@@ -1,11 +1,11 @@
 """How far each commitment can be met: the least it must miss with everything else held."""
 
-from collections.abc import Callable, Collection, Iterable, Iterator, Sequence
+from collections.abc import Callable, Collection, Iterator, Sequence
 from dataclasses import dataclass, replace
 from math import ceil, floor
 
 from schemas.commitments import Commitment, EnergyAtLeast, EnergyAtMost, HoursAtLeast, HoursAtMost
-from workers.planning.diagnosis.elements import SPARED_FIRST, Element
+from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.feasibility import Solving, most_energy, without_money
 from workers.planning.diagnosis.localise import Trouble
 from workers.planning.diagnosis.scope import Scope, row_of
@@ -66,16 +66,13 @@ def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozens
     left_out: list[Element] = []
     if not is_possible(kept):
         conflicting, kept = everything, frozenset()
-    for element in _facts_first(element for element in trouble.scope.elements if element in conflicting):
+    # in the order of the scope: facts of the plant first, then targets, then rows
+    for element in (element for element in trouble.scope.elements if element in conflicting):
         if is_possible(kept | {element}):
             kept |= {element}
         else:
             left_out.append(element)
     return left_out
-
-
-def _facts_first(elements: Iterable[Element]) -> list[Element]:
-    return sorted(elements, key=lambda element: SPARED_FIRST.index(element.kind))
 
 
 def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> float:
@@ -97,12 +94,12 @@ def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) ->
         if had < min(whole_intervals(row.due_hours, hours), floor((row.due_hours - proven) / hours + 2 * CLOSE)):
             raise solving.cut_short()
         return max(0.0, row.due_hours - hours * had)
+    if missed - proven > grain / 2:
+        raise solving.cut_short()
     if isinstance(row, CeilingRow):
         if missed <= 2 * CLOSE * grain:
             return 0.0
         return max(0.0, hours * floor((row.allowed_hours + missed) / hours + 0.5) - row.allowed_hours)
-    if missed - proven > grain:
-        raise solving.cut_short()
     return max(0, ceil(missed / grain - 1.5 * CLOSE)) * grain
 
 

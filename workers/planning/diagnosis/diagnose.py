@@ -9,12 +9,12 @@ from dataclasses import dataclass, field
 from math import inf
 
 from schemas.diagnosis import Repair
-from workers.planning.diagnosis.again import Audited, Planner
+from workers.planning.diagnosis.again import Audited, Planner, key_of
 from workers.planning.diagnosis.attainable import Reached, is_ceiling, reached
 from workers.planning.diagnosis.cures import CureSearch
 from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.localise import Trouble, find_conflicts, search_further, troubles_of
-from workers.planning.diagnosis.nearest import Nearest, key_of, nearest
+from workers.planning.diagnosis.nearest import Nearest, nearest
 from workers.planning.diagnosis.repairs import Joined, repairs_of
 from workers.planning.diagnosis.scope import Question, row_of
 from workers.planning.parts import independent_parts

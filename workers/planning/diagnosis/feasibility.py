@@ -1,6 +1,6 @@
 """Whether something is possible at all, money aside: the question that a diagnosis asks over and over."""
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from math import inf
 
 import numpy as np
@@ -26,13 +26,12 @@ class CutShort(Exception):  # noqa: N818 - it says that there is no time left, n
 
 @dataclass
 class Solving:
-    """What a diagnosis may take: its limits, until when it may ask solvers, and how often it did."""
+    """What a diagnosis may take: its limits, and until when it may ask solvers."""
 
     limits: Limits
     watch: Watch
     seed: int
     ends: float
-    solves: int = field(default=0)
 
     @property
     def seconds_left(self) -> float:
@@ -42,7 +41,7 @@ class Solving:
     def until(self, share: float, most: float) -> "Solving":
         """Give a budget that ends after a share of what is left, or after so many seconds."""
         seconds = min(max(self.seconds_left, 0.0) * share, most)
-        return replace(self, ends=self.limits.clock() + seconds, solves=0)
+        return replace(self, ends=self.limits.clock() + seconds)
 
     def solve(
         self,
@@ -58,7 +57,6 @@ class Solving:
         """
         if self.seconds_left <= 0 or self.watch.is_stop_asked():
             raise CutShort("no time left")
-        self.solves += 1
         seconds = min(self.seconds_left, most)
         return solve_jointly(
             instance, self.limits, self.watch, seed=self.seed, seconds=seconds, earlier=earlier, by_pyomo=is_plan

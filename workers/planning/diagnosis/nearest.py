@@ -15,7 +15,7 @@ from schemas.diagnosis import Shortfall
 from schemas.job import ScheduleJob
 from schemas.quantities import LARGEST
 from workers.planning.assembly import UnitPlan
-from workers.planning.diagnosis.again import Planner, choice_of
+from workers.planning.diagnosis.again import Planner, choice_of, key_of
 from workers.planning.diagnosis.attainable import is_ceiling
 from workers.planning.diagnosis.elements import SIDES, words_of
 from workers.planning.diagnosis.feasibility import Solving, most_energy, without_money
@@ -24,7 +24,7 @@ from workers.planning.diagnosis.levers.energy import with_target
 from workers.planning.diagnosis.scope import Question
 from workers.planning.diagnosis.shortfall import ROOM, Lowered, Raised, final_energy, lowered, raised
 from workers.planning.instance import Instance, Meter
-from workers.planning.methods import Choice, Found
+from workers.planning.methods import Found
 from workers.planning.parts import independent_parts
 from workers.planning.rows import CeilingRow, CommitmentRow, HoursRow
 from workers.planning.solvers.ending import Stopped
@@ -61,14 +61,8 @@ class Nearest:
     """Parts as they were solved, what each misses, and the request relaxed by just that."""
 
     job: ScheduleJob
-    choice: Choice
     found: Found
     missing: tuple[Shortfall, ...]
-
-
-def key_of(part: Instance) -> tuple[str, ...]:
-    """Name an independent part by its plants and meters."""
-    return tuple(unit.id for unit in part.units) + tuple(meter.id for meter in part.meters)
 
 
 def nearest(
@@ -93,8 +87,7 @@ def nearest(
         for shortfall, relax in _missing(question, original, solution.plans):
             missing.append(shortfall)
             job = relax(job)
-    choice = choice_of(tuple(parts))
-    return Nearest(job, choice, Found(choice, tuple(solutions)), tuple(missing))
+    return Nearest(job, Found(choice_of(tuple(parts)), tuple(solutions)), tuple(missing))
 
 
 def _least_missing(part: Instance, solving: Solving) -> tuple[UnitPlan, ...] | None:

@@ -5,6 +5,7 @@ from copy import deepcopy
 from typing import Any
 
 from schemas.job import Job, ScheduleJob
+from schemas.json_patch import patched
 from schemas.reading import canonical, read_job
 from workers.planning.diagnosis.levers.lever import Values
 
@@ -40,24 +41,9 @@ def patch_of(document: dict[str, Any], values: Values) -> list[Operation]:
     return operations
 
 
-def apply_patch(document: dict[str, Any], operations: list[Operation]) -> dict[str, Any]:
-    """Apply operations of `patch_of` to a document."""
-    changed = deepcopy(document)
-    for operation in operations:
-        *parents, last = operation["path"].removeprefix("/").split("/")
-        here: Any = changed
-        for step in parents:
-            here = here[int(step)] if isinstance(here, list) else here[step]
-        if operation["op"] == "remove":
-            del here[last]
-        else:
-            here[last] = deepcopy(operation["value"])
-    return changed
-
-
 def patched_job(document: dict[str, Any], operations: list[Operation]) -> ScheduleJob:
     """Read the patched document as a job to be scheduled; raises InvalidRequest where it is none."""
-    changed = apply_patch(document, operations)
+    changed = patched(document, operations)
     asked = {name: value for name, value in changed.items() if name not in OF_OTHER_TASKS}
     job = read_job(asked | {"task": "schedule"})
     assert isinstance(job, ScheduleJob)

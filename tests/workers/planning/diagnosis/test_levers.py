@@ -6,12 +6,13 @@ import jsonpatch
 import pytest
 
 from schemas.job import ScheduleJob
+from schemas.json_patch import patched
 from schemas.reading import canonical, read_job
 from tests.workers.planning.jobs import generator, hours, job, outage, product, renewable, store
 from workers.planning.diagnosis.cures import least_step
 from workers.planning.diagnosis.levers import levers_of
 from workers.planning.diagnosis.levers.lever import Grid, Lever
-from workers.planning.diagnosis.patches import apply_patch, document_of, patch_of
+from workers.planning.diagnosis.patches import document_of, patch_of
 from workers.planning.diagnosis.scope import Question, whole
 from workers.planning.instance import instance_of
 
@@ -115,7 +116,7 @@ def test_what_a_lever_does_to_the_job_is_what_it_writes_into_the_request() -> No
         for step in sorted({1, 2, lever.steps // 2, lever.steps} & set(range(1, lever.steps + 1))):
             patch = patch_of(document, lever.values(step))
             by_library = jsonpatch.apply_patch(document, patch)
-            assert by_library == apply_patch(document, patch), lever.pointer
+            assert by_library == patched(document, patch), lever.pointer
             done = lever.apply(read, step)
             assert canonical(read_job(by_library)) == canonical(read_job(document_of(done))), lever.pointer
             assert by_library != document, f"{lever.pointer}: step {step} changes nothing"

@@ -8,7 +8,7 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from service.demo.json_patch import PatchRefused, patched
+from schemas.json_patch import PatchRefused, patched
 
 # RFC 6902, appendix A, with the number of each example.
 EXAMPLES: dict[str, tuple[Any, tuple[Any, ...], Any]] = {
