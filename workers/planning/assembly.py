@@ -10,6 +10,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from scipy.sparse import csr_matrix, vstack
 
+from workers.planning.delivery import deliveries_of
 from workers.planning.instance import Instance
 from workers.planning.model import Columns, Model
 from workers.planning.rows import CeilingRow, CommitmentRow, EnergyRow, FirmRow, HoldingRow, HoursRow
@@ -37,6 +38,7 @@ from workers.planning.rules import (
     settlement,
     start_costs,
     stored_energy,
+    stored_for_hours,
     unit_states,
     wear,
 )
@@ -124,11 +126,17 @@ class Assembled:
 
 
 def assemble(
-    instance: Instance, apart: list[Booleans], tangents: Sequence[Tangents] = (), *, by_pyomo: bool = True
+    instance: Instance,
+    apart: list[Booleans],
+    tangents: Sequence[Tangents] = (),
+    *,
+    by_pyomo: bool = True,
+    is_tightened: bool = True,
 ) -> Assembled:
     """Write every rule of an instance into one model; `apart` says per store where modes are exclusive by a binary.
 
-    The dozens of small questions of a diagnosis skip Pyomo, which takes a third of their time.
+    The dozens of small questions of a diagnosis skip Pyomo, which takes a third of their time. A model that is
+    `is_tightened` has rows that no schedule needs and that make its LP relaxation better.
     """
     model = Model()
     columns = FleetColumns(instance, tuple(unit_columns(model, unit, instance.products) for unit in instance.units))
@@ -142,8 +150,9 @@ def assemble(
         connection_limits.add(model, columns, meter)
         lots.add(model, columns, meter)
     settlement.add(model, columns)
-    for row in instance.rows:
-        _add_row(model, columns, row)
+    counted = [_add_row(model, columns, row) for row in instance.rows]
+    if is_tightened:
+        _tighten(model, columns, counted)
     return Assembled(columns, modes, highs.matrix_of(model.as_pyomo()) if by_pyomo else _matrix(model))
 
 
@@ -187,10 +196,31 @@ def _add_unit(model: Model, instance: Instance, unit: UnitColumns) -> None:
         energy_needs.add(model, unit, instance.hours)
 
 
-def _add_row(model: Model, columns: FleetColumns, row: CommitmentRow) -> None:
+def _tighten(model: Model, columns: FleetColumns, counted: Sequence[Columns | None]) -> None:
+    """Bind stored energy to delivered hours for every store whose hours take most of what it can; by row `counted`."""
+    instance = columns.instance
+    by_store: dict[int, list[tuple[HoursRow, Columns]]] = {}
+    for row, members in zip(instance.rows, counted, strict=True):
+        if members is not None and isinstance(row, HoursRow) and row.discharging is not None:
+            by_store.setdefault(row.discharging, []).append((row, members))
+    for number, asked in by_store.items():
+        store = columns.units[number]
+        if not isinstance(store, StoreColumns):
+            continue
+        for deliveries in deliveries_of(store.unit, [row for row, _ in asked], instance.hours, instance.intervals):
+            if stored_for_hours.is_worth_adding(deliveries):
+                where = np.full(instance.intervals, -1)
+                for row, members in asked:
+                    if any(row is each for each in deliveries.rows):
+                        where[list(row.intervals)] = members
+                stored_for_hours.add(model, store, deliveries, where)
+
+
+def _add_row(model: Model, columns: FleetColumns, row: CommitmentRow) -> Columns | None:
+    """Add a row of a commitment; of hours give the columns that say where they count."""
     if isinstance(row, HoursRow):
-        hours_at_least.add(model, columns, row)
-    elif isinstance(row, CeilingRow):
+        return hours_at_least.add(model, columns, row)
+    if isinstance(row, CeilingRow):
         hours_at_most.add(model, columns, row)
     elif isinstance(row, FirmRow):
         firm_delivery.add(model, columns, row)
@@ -200,6 +230,7 @@ def _add_row(model: Model, columns: FleetColumns, row: CommitmentRow) -> None:
         reserve_holding.add(model, columns, row)
     else:
         raise TypeError(f"no rule for {row}")
+    return None
 
 
 def where_mixing_may_pay(instance: Instance) -> list[Booleans]:

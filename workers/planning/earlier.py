@@ -38,6 +38,11 @@ def earlier_of(instance: Instance, assets: Iterable[AssetSchedule]) -> Earlier:
     }
 
 
+def plans_by_unit(instance: Instance, plans: tuple[UnitPlan, ...]) -> Earlier:
+    """Name what an instance's units do by their ids."""
+    return {unit.id: plan for unit, plan in zip(instance.units, plans, strict=True)}
+
+
 def plans_for(instance: Instance, earlier: Earlier | None) -> tuple[UnitPlan, ...] | None:
     """Take the earlier plans of an instance's units in its order; None unless there is one for each, of its length."""
     if earlier is None or not instance.units:

@@ -57,6 +57,10 @@ LITTLE_LEFT_GAP = 1e-9
 EARLIER_SHARE = 0.1
 """Share of the time for the choices of an earlier schedule whose powers are not possible any more."""
 
+MOMENT = 0.1
+CP_SAT_SHARE = 0.25
+"""Seconds for HiGHS before CP-SAT is asked whether anything is possible, and the share of the time it may take then."""
+
 MONEY_UNIT = 1.0
 """Gaps are measured against at least one unit of the currency (contract, section 6)."""
 
@@ -86,6 +90,7 @@ class _Search:
     ends: float
     by: str = "highs"
     by_pyomo: bool = True
+    any_will_do: bool = False
     tangents: list[Tangents] = field(default_factory=list)
     margin: float | None = None
     plans: tuple[UnitPlan, ...] | None = None
@@ -100,7 +105,13 @@ class _Search:
 
     def assemble(self) -> Assembled:
         began = perf_counter()
-        assembled = assemble(self.instance, self.apart, self.tangents, by_pyomo=self.by_pyomo)
+        assembled = assemble(
+            self.instance,
+            self.apart,
+            self.tangents,
+            by_pyomo=self.by_pyomo,
+            is_tightened=self.by != "cp_sat",
+        )
         self.build_seconds += perf_counter() - began
         return assembled
 
@@ -108,6 +119,8 @@ class _Search:
         """Solve, and take over what is proven."""
         if self.by == "cp_sat":
             ending = self._run_cp_sat(assembled)
+        elif self.any_will_do and assembled.matrix.integer.any():
+            ending = self._run_in_turns(assembled.matrix)
         else:
             ending = self._run(assembled.matrix, self._left(), self.watch)
         self.last = ending.stopped
@@ -151,6 +164,29 @@ class _Search:
         ending = cp_sat.solve(assembled.matrix, self._effort(self._left()), self.watch, hint=self.values)
         self.solver_seconds += ending.seconds
         return ending
+
+    def _run_in_turns(self, matrix: highs.Matrix) -> Ending:
+        """Find any point, or prove that there is none: HiGHS for a moment, then CP-SAT, then HiGHS again.
+
+        CP-SAT is through with states, runs and blocks several times sooner; what it chose counts where exact powers
+        exist for it. Its own proof is of a model that relaxes this one.
+        """
+        ending = self._run(matrix, min(MOMENT, self._left()), self.watch)
+        if ending.stopped is not Stopped.OUT_OF_TIME or ending.values is not None:
+            return ending
+        for near in (True, False):
+            try:
+                chosen = cp_sat.solve(matrix, self._effort(CP_SAT_SHARE * self._left()), self.watch, near=near)
+            except cp_sat.BeyondWholeSteps:
+                break
+            self.solver_seconds += chosen.seconds
+            if chosen.stopped is Stopped.INFEASIBLE and not near:
+                return chosen
+            if chosen.values is not None:
+                exact = self._run(highs.fixed(matrix, chosen.values), self._left(), self.watch)
+                if exact.values is not None:
+                    return replace(exact, bound=INFINITE)
+        return self._run(matrix, self._left(), self.watch)
 
     def relax(self, assembled: Assembled) -> Ending:
         """Solve the LP relaxation and take over its bound."""
@@ -279,13 +315,16 @@ def solve_jointly(
     everywhere: bool = False,
     earlier: tuple[UnitPlan, ...] | None = None,
     by_pyomo: bool = True,
+    any_will_do: bool = False,
 ) -> Solution:
     """Plan all units of an instance in one model; `everywhere` puts in every binary from the start.
 
     `earlier` is what the units did in an earlier schedule; one that does not fit the instance is passed over.
     """
     apart = [where | np.bool_(everywhere) for where in where_mixing_may_pay(instance)]
-    search = _Search(instance, apart, seed, limits, watch, limits.clock() + seconds, by_pyomo=by_pyomo)
+    search = _Search(
+        instance, apart, seed, limits, watch, limits.clock() + seconds, by_pyomo=by_pyomo, any_will_do=any_will_do
+    )
     _search_jointly(search, earlier)
     if search.plans is None and search.last is not Stopped.INFEASIBLE:
         _start_from(search, search.assemble(), earlier)
@@ -295,12 +334,13 @@ def solve_jointly(
 def _search_jointly(search: _Search, earlier: tuple[UnitPlan, ...] | None) -> None:
     """Search until the best in hand is proven good enough, or time or patience ends."""
     assembled, several = search.assemble(), len(search.instance.units) > 1
-    if assembled.matrix.integer.any() and (several or earlier is not None):
+    is_near_tried = several or search.any_will_do
+    if assembled.matrix.integer.any() and (is_near_tried or earlier is not None):
         relaxed = search.solve(assembled.without_integers())
         if relaxed.values is None:
             return
         _start_from(search, assembled, earlier)
-        if several and not search.is_proven():
+        if is_near_tried and not search.is_proven():
             _first_schedule(search, assembled, relaxed.values)
         if search.is_proven() or search.last is not Stopped.WITHIN_GAP:
             return

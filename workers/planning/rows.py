@@ -60,6 +60,12 @@ class HoursRow(CommitmentRow):
     due_hours: float
     min_block: int
 
+    @property
+    def discharging(self) -> int | None:
+        """Number of the one unit that it binds to discharge; None where it has a price, or asks for anything else."""
+        is_of_one = self.asset is not None and len(self.units) == 1
+        return self.units[0] if is_of_one and self.price is None and self.sign > 0 else None
+
 
 @dataclass(frozen=True)
 class CeilingRow(CommitmentRow):

@@ -29,6 +29,7 @@ from workers.planning.rules import (
     ramps,
     runs,
     stored_energy,
+    stored_for_hours,
 )
 from workers.planning.store import Store
 
@@ -266,6 +267,8 @@ def test_the_commitment_rule_with_its_threshold_halved_is_caught(monkeypatch: py
         "add",
         lambda model, columns, row: true_add(model, columns, replace(row, threshold_mw=row.threshold_mw / 2)),
     )
+    # the rows that bind stored energy to hours know the threshold too, and would make up for it
+    monkeypatch.setattr(stored_for_hours, "is_worth_adding", lambda _: False)
     caught(
         job(
             [10.0, 50.0],

@@ -10,6 +10,7 @@ from schemas.job import ScheduleJob
 from schemas.schedule import Schedule
 from workers.planning.assembly import UnitPlan
 from workers.planning.diagnosis.feasibility import Solving
+from workers.planning.earlier import Earlier, plans_for
 from workers.planning.instance import Instance, instance_of
 from workers.planning.joint import Solution
 from workers.planning.methods import Choice, Found
@@ -31,15 +32,16 @@ class Planner:
         self._audited = audited
         self._known: dict[tuple[str, ...], tuple[Instance, Solution]] = {}
 
-    def plan(self, job: ScheduleJob, solving: Solving) -> Schedule | None:
+    def plan(self, job: ScheduleJob, solving: Solving, earlier: Earlier) -> Schedule | None:
         """Plan a job; None where it cannot be met, or where the audit refuses what was found: that is counted.
 
-        Raises CutShort where time decides nothing.
+        The search begins from what units did `earlier`, where that is known. Raises CutShort where time decides
+        nothing.
         """
         parts = tuple(independent_parts(instance_of(job)))
         solutions = []
         for part in parts:
-            solution = self.solution(part, solving)
+            solution = self.solution(part, solving, plans_for(part, earlier))
             if solution.plans is None:
                 if solution.bound == -np.inf:
                     return None

@@ -5,10 +5,12 @@ from dataclasses import dataclass, replace
 from math import ceil, floor
 
 from schemas.commitments import Commitment, EnergyAtLeast, EnergyAtMost, HoursAtLeast, HoursAtMost
+from workers.planning.diagnosis import lone_store
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.feasibility import Solving, most_energy, without_money
 from workers.planning.diagnosis.localise import Trouble
 from workers.planning.diagnosis.scope import Scope, row_of
+from workers.planning.earlier import Earlier, plans_by_unit
 from workers.planning.instance import Instance
 from workers.planning.rows import CeilingRow, CommitmentRow, EnergyRow, FirmRow, HoldingRow, HoursRow
 from workers.planning.store import whole_intervals
@@ -22,12 +24,16 @@ CLOSE = 0.02
 
 @dataclass(frozen=True)
 class Reached:
-    """What a commitment asks in a row and what it can have, in its unit; what else had to be left out for that."""
+    """What a commitment asks in a row and what it can have, in its unit; what else had to be left out for that.
+
+    `plans` are what the units did for it, where a solver found it.
+    """
 
     row: CommitmentRow
     required: float
     attainable: float
     left_out: tuple[Element, ...]
+    plans: Earlier
 
 
 def reached(trouble: Trouble, known: Collection[Element], solving: Solving) -> Iterator[Reached]:
@@ -38,13 +44,14 @@ def reached(trouble: Trouble, known: Collection[Element], solving: Solving) -> I
         if row.price is None and row_of(row) in named and row_of(row) not in known:
             left_out = _in_the_way(trouble, row_of(row), trouble.tester(solving))
             required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
-            yield Reached(row, required, _attainable(scope, row, required, left_out, solving), tuple(left_out))
+            attainable, plans = _attainable(scope, row, required, left_out, solving)
+            yield Reached(row, required, attainable, tuple(left_out), plans)
 
 
 def _attainable(
     scope: Scope, row: CommitmentRow, required: float, left_out: Sequence[Element], solving: Solving
-) -> float:
-    """Give what a row can have at most (a ceiling: at least), in its unit, with all but `left_out` held.
+) -> tuple[float, Earlier]:
+    """Give what a row can have at most (a ceiling: at least), in its unit, with all but `left_out` held; and by what.
 
     Hours may be more than are asked where something had to be left out.
     """
@@ -52,8 +59,8 @@ def _attainable(
     if isinstance(row, HoursRow) and left_out:
         asked = replace(row, due_hours=len(row.intervals) * scope.instance.hours)
         more = asked.due_hours - row.due_hours
-    least = solve_shortfall(scope.without(left_out), asked, solving)
-    return max(0.0, required + least if is_ceiling(row) else required + more - least)
+    least, plans = solve_shortfall(scope.without(left_out), asked, solving)
+    return max(0.0, required + least if is_ceiling(row) else required + more - least), plans
 
 
 def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozenset[Element]], bool]) -> list[Element]:
@@ -75,20 +82,32 @@ def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozens
     return left_out
 
 
-def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> float:
-    """Price one row alone, and find the schedule that misses least of it, in its unit; raises CutShort.
+def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> tuple[float, Earlier]:
+    """Price one row alone, and give the least it can miss, in its unit, with what the units do then; raises CutShort.
 
-    Power that flows is worth or costs next to nothing, together less than `CLOSE` of a grain either way.
+    Of nobody is it known what it does where no solver was asked. Power that flows is worth or costs next to nothing,
+    together less than `CLOSE` of a grain either way.
     """
     hours, grain = instance.hours, grain_of(row, instance.hours)
+    rows = tuple(row if row_of(other) == row_of(row) else other for other in instance.rows)
+    if isinstance(row, HoursRow):
+        solving.require_time()
+        most = lone_store.most_intervals(replace(instance, rows=rows), row)
+        if most is not None:
+            return max(0.0, row.due_hours - hours * min(most, whole_intervals(row.due_hours, hours))), {}
     bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
     rows = tuple(replace(row, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
     # hours come in whole intervals: less than one of them open is none
     gap = grain * (1 - 5 * CLOSE if isinstance(row, HoursRow) else CLOSE)
     found = solving.solve(replace(bare, rows=rows, absolute_gap=gap, relative_gap=1e-9))
-    if found.margin is None:
+    if found.margin is None or found.plans is None:
         raise solving.cut_short()
-    missed, proven = -found.margin, -found.bound
+    return _told(row, hours, -found.margin, -found.bound, solving), plans_by_unit(instance, found.plans)
+
+
+def _told(row: CommitmentRow, hours: float, missed: float, proven: float, solving: Solving) -> float:
+    """Say what is missing in the steps in which figures are told; raises CutShort where it is not proven that far."""
+    grain = grain_of(row, hours)
     if isinstance(row, HoursRow):
         had = _most_intervals(row, missed, hours)
         if had < min(whole_intervals(row.due_hours, hours), floor((row.due_hours - proven) / hours + 2 * CLOSE)):

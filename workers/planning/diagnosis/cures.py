@@ -6,13 +6,13 @@ from itertools import combinations
 
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.enumeration import shrink
-from workers.planning.diagnosis.feasibility import CutShort, Solving
+from workers.planning.diagnosis.feasibility import CutShort, Possible, Solving
 from workers.planning.diagnosis.levers import levers_of
 from workers.planning.diagnosis.levers.lever import Lever, Values
 from workers.planning.diagnosis.localise import Trouble
 from workers.planning.diagnosis.scope import Scope
+from workers.planning.earlier import Earlier
 from workers.planning.instance import Instance
-from workers.planning.screening import screen
 
 MOST_LEVERS_TOGETHER = 4
 MOST_COMBINED = 6
@@ -32,25 +32,44 @@ class Move:
         return self.lever.values(self.step)
 
 
+@dataclass(frozen=True)
+class Cure:
+    """What is moved together, and what the units do then where a solver found that out."""
+
+    moves: tuple[Move, ...]
+    plans: Earlier
+
+    @property
+    def places(self) -> frozenset[tuple[str, str]]:
+        """Name the levers, whatever their steps."""
+        return frozenset((move.lever.pointer, move.lever.unit) for move in self.moves)
+
+
+@dataclass(frozen=True)
+class Figure:
+    """Hours or energy that a commitment can have at most, whether asking for no more cures, and what units do then."""
+
+    attainable: float
+    cures: bool
+    plans: Earlier
+
+
 STRIDE = 4
 """Strides towards a step that cures grow by this factor."""
-
-Cure = tuple[Move, ...]
 
 
 class CureSearch:
     """The search for the cures of a part; it goes on where it was left, with the time it is given then.
 
-    `reached` are hours or energy that rows can have at most, by the pointer of the lever that asks for them, and
-    whether that alone cures.
+    `reached` are figures of commitments by the pointer of the lever that asks for them.
     """
 
-    def __init__(self, trouble: Trouble, reached: Mapping[str, tuple[float, bool]]) -> None:
+    def __init__(self, trouble: Trouble, reached: Mapping[str, Figure]) -> None:
         self.cures: list[Cure] = []
         self.is_done = False
         self._trouble = trouble
         self._reached = reached
-        self._tried: dict[frozenset[tuple[Lever, int]], bool] = {}
+        self._tried: dict[frozenset[tuple[Lever, int]], Possible] = {}
         self._search: Iterator[Cure] | None = None
         self._solving: Solving | None = None
 
@@ -67,7 +86,7 @@ class CureSearch:
                 raise
             if cure is None:
                 self.is_done = True
-            elif not any(places(cure) == places(known) for known in self.cures):
+            elif not any(cure.places == known.places for known in self.cures):
                 self.cures.append(cure)
 
     def _all(self) -> Iterator[Cure]:
@@ -98,17 +117,23 @@ class CureSearch:
     def _least(self, levers: tuple[Lever, ...]) -> Cure | None:
         """Find the least steps of some levers that cure together, one after the other; None where all do not."""
         if len(levers) == 1 and (known := self._known(levers[0])):
-            return (known,)
+            return known
         needed = {lever: self._needed_at_home(lever, levers) for lever in levers}
         if all(needed.values()) and self._is_cured(needed):
-            return tuple(Move(lever, step) for lever, step in needed.items())
+            return self._cure(needed)
         steps = {lever: lever.steps for lever in levers}
         if not self._is_cured(steps):
             return None
         for lever in levers:
             without = steps | {lever: 0}
             steps[lever] = 0 if self._is_cured(without) else self._least_step(lever, steps, needed[lever])
-        return tuple(Move(lever, step) for lever, step in steps.items() if step > 0)
+        return self._cure(steps)
+
+    def _cure(self, steps: Mapping[Lever, int]) -> Cure:
+        """Write down steps that were tried and do."""
+        moved = {lever: step for lever, step in steps.items() if step > 0}
+        known = self._tried.get(frozenset(moved.items()), Possible(True))
+        return Cure(tuple(Move(lever, step) for lever, step in moved.items()), known.plans)
 
     def _needed_at_home(self, lever: Lever, levers: Collection[Lever]) -> int:
         """Give a step below which a lever cannot cure: what a smaller scope of the part needs, all else at its loosest.
@@ -143,7 +168,7 @@ class CureSearch:
         """
         found: list[frozenset[str]] = []
         if (chosen := self._touching_most(levers)) and (cure := self._least(chosen)):
-            found.append(frozenset(move.lever.pointer for move in cure))
+            found.append(frozenset(move.lever.pointer for move in cure.moves))
             yield cure
         for size in range(2, MOST_LEVERS_TOGETHER + 1):
             for chosen in combinations(levers, size):
@@ -155,7 +180,7 @@ class CureSearch:
                 if not self._would_do(frozenset[Element]().union(*(lever.covers for lever in chosen))):
                     continue
                 if cure := self._least(chosen):
-                    found.append(frozenset(move.lever.pointer for move in cure))
+                    found.append(frozenset(move.lever.pointer for move in cure.moves))
                     yield cure
                     if len(found) == MOST_COMBINED:
                         return
@@ -192,8 +217,8 @@ class CureSearch:
         if not moved:
             return False
         if moved not in self._tried:
-            self._tried[moved] = self._time().is_possible(self._at(steps))
-        return self._tried[moved]
+            self._tried[moved] = self._time().possible(self._at(steps))
+        return self._tried[moved].is_possible
 
     def _at(self, steps: Mapping[Lever, int]) -> Instance:
         job = self._trouble.scope.job
@@ -206,7 +231,8 @@ class CureSearch:
 
         Arithmetic, and what is `needed` at home, tell from where on it is worth asking a solver.
         """
-        refused = least_step(lambda step: not screen(self._at({**steps, lever: step})), 0, lever.steps) - 1
+        time = self._time()
+        refused = least_step(lambda step: not time.is_hopeless(self._at({**steps, lever: step})), 0, lever.steps) - 1
         hopeless = max(refused, needed - 1)
 
         def cures(step: int) -> bool:
@@ -214,27 +240,24 @@ class CureSearch:
 
         return least_step(cures, hopeless, lever.steps, self._guess(lever))
 
-    def _known(self, lever: Lever) -> Move | None:
+    def _known(self, lever: Lever) -> Cure | None:
         """Give the step known to be the least that cures: what the only row of a commitment can have at most."""
         step = self._guess(lever)
-        return Move(lever, step) if step and self._reached[lever.pointer][1] else None
+        if not step or not self._reached[lever.pointer].cures:
+            return None
+        return Cure((Move(lever, step),), self._reached[lever.pointer].plans)
 
     def _time(self) -> Solving:
         assert self._solving is not None
         return self._solving
 
     def _guess(self, lever: Lever) -> int | None:
-        figure, _ = self._reached.get(lever.pointer, (None, False))
-        if figure is None:
+        if lever.pointer not in self._reached:
             return None
-        if float(lever.shown(lever.steps)) > figure + 1e-9:
+        most = self._reached[lever.pointer].attainable + 1e-9
+        if float(lever.shown(lever.steps)) > most:
             return None
-        return least_step(lambda step: float(lever.shown(step)) <= figure + 1e-9, 0, lever.steps)
-
-
-def places(cure: Cure) -> frozenset[tuple[str, str]]:
-    """Name the levers of a cure, whatever their steps."""
-    return frozenset((move.lever.pointer, move.lever.unit) for move in cure)
+        return least_step(lambda step: float(lever.shown(step)) <= most, 0, lever.steps)
 
 
 def least_step(cures: Callable[[int], bool], fails: int, works: int, near: int | None = None) -> int:

@@ -11,7 +11,7 @@ from math import inf
 from schemas.diagnosis import Repair
 from workers.planning.diagnosis.again import Audited, Planner, key_of
 from workers.planning.diagnosis.attainable import Reached, is_ceiling, reached
-from workers.planning.diagnosis.cures import CureSearch
+from workers.planning.diagnosis.cures import CureSearch, Figure
 from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.localise import Trouble, find_conflicts, search_further, troubles_of
 from workers.planning.diagnosis.nearest import Nearest, nearest
@@ -120,21 +120,21 @@ def _find_cures(found: Findings, solving: Solving, most: int | None) -> None:
         search.go_on(solving, most)
 
 
-def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, tuple[float, bool]]:
+def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, Figure]:
     """Give for each commitment the fewest hours, or the least energy, that any of its rows can have.
 
     Asking for no more hours cures where it is the only row of its commitment and nothing had to be left out for it.
     """
     rows = Counter(row.commitment for row in trouble.scope.instance.rows)
-    figures: dict[str, tuple[float, bool]] = {}
+    figures: dict[str, Figure] = {}
     for one in found.reached:
         if is_ceiling(one.row):
             continue
         is_hours = isinstance(one.row, HoursRow)
         place = f"{one.row.pointer}/{'hours' if is_hours else 'energy_mwh'}"
         cures = is_hours and rows[one.row.commitment] == 1 and not one.left_out
-        least, _ = figures.get(place, (one.attainable, True))
-        figures[place] = (min(one.attainable, least), cures)
+        if place not in figures or one.attainable < figures[place].attainable:
+            figures[place] = Figure(one.attainable, cures, one.plans)
     return figures
 
 

@@ -1,11 +1,13 @@
 """Whether something is possible at all, money aside: the question that a diagnosis asks over and over."""
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from math import inf
 
 import numpy as np
 
 from workers.planning.assembly import UnitPlan
+from workers.planning.diagnosis import lone_store
+from workers.planning.earlier import Earlier, plans_by_unit
 from workers.planning.flows import FlexibleLoadUnit, RenewableUnit
 from workers.planning.generator import GeneratorUnit
 from workers.planning.instance import Instance, Meter
@@ -50,35 +52,68 @@ class Solving:
         earlier: tuple[UnitPlan, ...] | None = None,
         *,
         is_plan: bool = False,
+        any_will_do: bool = False,
     ) -> Solution:
         """Solve an instance, from `earlier` plans where given, with the time left or `most` seconds of it.
 
         A plan to be shown goes through Pyomo like any other. Raises CutShort where there is no time left.
         """
-        if self.seconds_left <= 0 or self.watch.is_stop_asked():
-            raise CutShort("no time left")
+        self.require_time()
         seconds = min(self.seconds_left, most)
         return solve_jointly(
-            instance, self.limits, self.watch, seed=self.seed, seconds=seconds, earlier=earlier, by_pyomo=is_plan
+            instance,
+            self.limits,
+            self.watch,
+            seed=self.seed,
+            seconds=seconds,
+            earlier=earlier,
+            by_pyomo=is_plan,
+            any_will_do=any_will_do,
         )
+
+    def require_time(self) -> None:
+        """Raise CutShort where there is no time left, or the caller asked to stop."""
+        if self.seconds_left <= 0 or self.watch.is_stop_asked():
+            raise CutShort("no time left")
 
     @staticmethod
     def cut_short() -> CutShort:
         """Say that a question is not decided."""
         return CutShort("neither a schedule nor a proof")
 
+    @staticmethod
+    def is_hopeless(instance: Instance) -> bool:
+        """Tell whether arithmetic refuses an instance; where it does not, that says nothing."""
+        return lone_store.is_possible(instance) is False or bool(screen(instance))
+
     def is_possible(self, instance: Instance) -> bool:
         """Tell whether an instance has any schedule; raises CutShort where time does not decide it."""
+        return self.possible(instance).is_possible
+
+    def possible(self, instance: Instance) -> "Possible":
+        """Tell whether an instance has any schedule, and give one where a solver found it; raises CutShort."""
+        self.require_time()
+        alone = lone_store.is_possible(instance)
+        if alone is not None:
+            return Possible(alone)
         if screen(instance):
-            return False
+            return Possible(False)
         if not instance.units and not instance.rows:
-            return True
-        found = self.solve(without_money(instance))
+            return Possible(True)
+        found = self.solve(without_money(instance), any_will_do=True)
         if found.plans is not None:
-            return True
+            return Possible(True, plans_by_unit(instance, found.plans))
         if found.stopped is Stopped.INFEASIBLE:
-            return False
+            return Possible(False)
         raise self.cut_short()
+
+
+@dataclass(frozen=True)
+class Possible:
+    """Whether something is possible, and what the units did where a solver found that out."""
+
+    is_possible: bool
+    plans: Earlier = field(default_factory=dict)
 
 
 def without_money(instance: Instance, small: float = 1.0) -> Instance:

@@ -15,6 +15,7 @@ from schemas.diagnosis import Shortfall
 from schemas.job import ScheduleJob
 from schemas.quantities import LARGEST
 from workers.planning.assembly import UnitPlan
+from workers.planning.diagnosis import lone_store
 from workers.planning.diagnosis.again import Planner, choice_of, key_of
 from workers.planning.diagnosis.attainable import is_ceiling
 from workers.planning.diagnosis.elements import SIDES, words_of
@@ -75,7 +76,7 @@ def nearest(
     for original in originals:
         part, start = original, None
         if key_of(original) in infeasible:
-            start = _least_missing(original, solving)
+            start = least_missing(original, solving)
             if start is None:
                 return None
             part = _asking_no_more(original, start)
@@ -90,8 +91,12 @@ def nearest(
     return Nearest(job, Found(choice_of(tuple(parts)), tuple(solutions)), tuple(missing))
 
 
-def _least_missing(part: Instance, solving: Solving) -> tuple[UnitPlan, ...] | None:
+def least_missing(part: Instance, solving: Solving) -> tuple[UnitPlan, ...] | None:
     """Find what a part does with the least missing in total; None where nothing can be done."""
+    solving.require_time()
+    alone = lone_store.least_missing(part, _weight)
+    if alone is not None:
+        return (alone,)
     bare = without_money(part, GRAIN_MWH / 10 / (3 * most_energy(part) + 1))
     found = solving.solve(
         replace(

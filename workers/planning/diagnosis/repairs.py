@@ -4,8 +4,8 @@ from collections.abc import Iterator, Sequence
 
 from schemas.diagnosis import Change, Repair
 from workers.planning.diagnosis.again import Planner
-from workers.planning.diagnosis.cures import Cure, Move, places
-from workers.planning.diagnosis.feasibility import Solving
+from workers.planning.diagnosis.cures import Cure, Move
+from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.levers.lever import Values
 from workers.planning.diagnosis.patches import document_of, patch_of, patched_job
 from workers.planning.diagnosis.scope import Question
@@ -28,12 +28,14 @@ def repairs_of(
 ) -> Iterator[Repair]:
     """Plan the request with each cure (one of every part that needs one) in place, but for those tried before.
 
-    Raises CutShort.
+    What the units did when the cure was found is the start. Raises CutShort when all were tried and time did not decide
+    some.
     """
     if not cures or not all(cures):
         return
-    document = document_of(question.job)
-    for moves in _together(cures):
+    document, undecided = document_of(question.job), False
+    for chosen in _together(cures):
+        moves = _joined(chosen)
         joined = frozenset((move.lever.pointer, move.lever.unit, move.step) for move in moves)
         if joined in tried:
             continue
@@ -43,7 +45,13 @@ def repairs_of(
             values |= move.values
         operations = patch_of(document, values)
         job = patched_job(document, operations)
-        schedule = planner.plan(job.model_copy(update={"relative_gap": max(job.relative_gap, GAP)}), solving)
+        known = {unit: plan for cure in chosen for unit, plan in cure.plans.items()}
+        try:
+            wide = job.model_copy(update={"relative_gap": max(job.relative_gap, GAP)})
+            schedule = planner.plan(wide, solving, known)
+        except CutShort:
+            undecided = True
+            continue
         if schedule is None or schedule.margin_bound is None:
             continue
         changes = [_change(move) for move in moves]
@@ -56,22 +64,23 @@ def repairs_of(
             margin=schedule.margin,
             margin_bound=schedule.margin_bound,
         )
+    if undecided:
+        raise solving.cut_short()
 
 
-def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Move]]:
+def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Cure]]:
     """Join one cure of every part: the first of each, then each further one of a part with those like it of the others.
 
     A commitment may bind assets of several parts: it is not eased by its hours in one and its threshold in another.
     """
     for wanted in [cures[0][0], *(cure for of_part in cures for cure in of_part[1:])][:MOST_REPAIRS]:
-        chosen = [next((cure for cure in of_part if places(cure) == places(wanted)), of_part[0]) for of_part in cures]
-        yield _joined(chosen)
+        yield [next((cure for cure in of_part if cure.places == wanted.places), of_part[0]) for of_part in cures]
 
 
 def _joined(cures: Sequence[Cure]) -> list[Move]:
     """Put moves of several parts side by side; of two of the same lever the further one stays."""
     moves: dict[tuple[str, str], Move] = {}
-    for move in (move for cure in cures for move in cure):
+    for move in (move for cure in cures for move in cure.moves):
         place = (move.lever.pointer, move.lever.unit)
         if place not in moves or moves[place].step < move.step:
             moves[place] = move

@@ -24,8 +24,8 @@ from workers.planning.store import whole_intervals
 from workers.planning.units import Booleans
 
 
-def add(model: Model, columns: FleetColumns, row: HoursRow) -> None:
-    """Add one row of a commitment."""
+def add(model: Model, columns: FleetColumns, row: HoursRow) -> Columns:
+    """Add one row of a commitment; give its columns y, in the order of its intervals."""
     hours = columns.instance.hours
     where = np.array(row.intervals, dtype=np.int64)
     excused = np.isin(where, list(row.excused))
@@ -40,10 +40,11 @@ def add(model: Model, columns: FleetColumns, row: HoursRow) -> None:
         _blocks(model, row, counted, where)
     if row.price is None:
         model.row(whole_intervals(row.due_hours, hours), INFINITE, (counted, 1.0))
-        return
+        return counted
     shortfall = model.columns(1, 0.0, max(row.due_hours, 0.0))
     model.earn(shortfall, -row.price)
     model.row(row.due_hours, INFINITE, (counted, hours), (shortfall, 1.0))
+    return counted
 
 
 def _within_reach(columns: FleetColumns, row: HoursRow) -> Booleans:
