@@ -119,7 +119,7 @@ class _Search:
         """Solve, and take over what is proven."""
         if self.by == "cp_sat":
             ending = self._run_cp_sat(assembled)
-        elif self.any_will_do and assembled.matrix.integer.any():
+        elif self.any_will_do and len(self.instance.units) == 1 and assembled.matrix.integer.any():
             ending = self._run_in_turns(assembled.matrix)
         else:
             ending = self._run(assembled.matrix, self._left(), self.watch)
