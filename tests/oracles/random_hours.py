@@ -1,7 +1,8 @@
 """Generate jobs of one store that must deliver for nearly as long, or for longer, than it can.
 
-The same seed gives the same job. Names, prices and sizes are invented. Nothing but energy, limits and hours matters in
-a plain one; in a particular one the store also has least powers, runs, rests, a ramp or blocks.
+The same seed gives the same job. Names, prices and sizes are invented. Nothing but energy, limits (some behind a
+connection with a load beside it) and hours matters in a plain one; in a particular one the store also has least powers,
+runs, rests, a ramp or blocks.
 """
 
 from __future__ import annotations
@@ -29,9 +30,17 @@ def tight_request(seed: int, *, is_particular: bool = False) -> Job:
     if is_particular:
         store |= _particulars(draw, store)
     asked = _commitments(draw, first, count, is_particular)
+    sites, loads = _site(draw, count) if draw.random() < 0.3 else ([], {})
+    if sites:
+        store["site"] = sites[0]["id"]
     low, high = store.get("min_stored_mwh", 0.0), store.get("max_stored_mwh", store["energy_capacity_mwh"])
+    starts = (0.0, store["energy_capacity_mwh"]) if draw.random() < 0.2 else (low, high)
     return {
-        "fleet": {"assets": [store], "sites": []},
+        "fleet": {
+            "assets": [store, *({"id": load, "kind": "fixed_load", "site": "fen"} for load in loads)],
+            "sites": sites,
+        },
+        "forecasts": loads,
         "window": {
             "start": at(first),
             "interval": "PT30M",
@@ -40,7 +49,7 @@ def tight_request(seed: int, *, is_particular: bool = False) -> Job:
             "price_per_mwh": [round(draw.uniform(-20, 120), 2) for _ in range(count)],
             "price_basis": "forecast",
         },
-        "initial": {ASSET: {"stored_mwh": round(draw.uniform(low, high), 2)}},
+        "initial": {ASSET: {"stored_mwh": round(draw.uniform(*starts), 2)}},
         "targets": {ASSET: {"final_stored_mwh": round(draw.uniform(low, high), 2)}},
         "outages": _outages(draw, first, count),
         "commitments": asked,
@@ -79,6 +88,14 @@ def _particulars(draw: random.Random, store: dict[str, Any]) -> dict[str, Any]:
     if draw.random() < 0.5:
         chosen["ramp_mw_per_hour"] = round(2 * power, 3)
     return chosen
+
+
+def _site(draw: random.Random, count: int) -> tuple[list[dict[str, Any]], dict[str, list[float]]]:
+    """Put the store behind a connection, sometimes beside a load."""
+    site = {"id": "fen", "export_limit_mw": draw.choice([0.5, 0.8, 1.0]), "import_limit_mw": draw.choice([0.5, 1.0])}
+    if draw.random() < 0.5:
+        return [site], {}
+    return [site], {"fen-mill": [round(draw.uniform(0.0, 0.45), 2) for _ in range(count)]}
 
 
 def _outages(draw: random.Random, first: float, count: int) -> list[dict[str, Any]]:

@@ -141,17 +141,39 @@ def test_a_store_that_more_binds_is_not_judged_possible(changes: Document) -> No
 @pytest.mark.parametrize(
     "members",
     [
-        {"sites": [{"id": "quay", "export_limit_mw": 0.2}]},
-        {"fleet": {"export_limit_mw": 0.2}},
+        {"sites": [{"id": "quay", "export_limit_mw": 1.0, "lot_mw": 0.1}]},
+        {"fleet": {"export_limit_mw": 1.0, "lot_mw": 0.1}},
         {"commitments": [hours({"assets": [B1]}, 1, 0.5, direction="charge")]},
         {"commitments": [hours({"assets": [B1]}, 2, 0.5, min_block_hours=2.0)]},
         {"commitments": [{"id": "f", "kind": "firm_delivery", "applies_to": {"assets": [B1]}, "power_mw": 0.1}]},
         {"commitments": [hours({"fleet": True}, 1, 0.5)]},
     ],
 )
-def test_limits_blocks_and_other_rows_are_left_to_a_solver(members: Document) -> None:
+def test_lots_blocks_and_other_rows_are_left_to_a_solver(members: Document) -> None:
     site = {"site": "quay"} if "sites" in members else {}
     assert lone_store.is_possible(instance_of(indexed(job([10.0] * 3, store(**site), stored=1.0, **members)))) is None
+
+
+def test_a_connection_leaves_a_store_what_the_load_beside_it_does_not_take() -> None:
+    # 0.3 MW may come in, and the mill takes 0.1 of it: 0.2 MWh an hour for 0.5 MW of delivery, of which 0.4 leave
+    mill = {"id": "quay-mill", "kind": "fixed_load", "site": "quay"}
+    for import_mw, export_mw, due, possible in [
+        (0.35, 0.4, 1, True),
+        (0.34, 0.4, 1, False),
+        (0.6, 0.39, 1, False),
+        (0.6, 0.4, 2, False),
+        (0.05, 0.4, 0, None),
+    ]:
+        sites = [{"id": "quay", "import_limit_mw": import_mw, "export_limit_mw": export_mw}]
+        asked: Document = {
+            "sites": sites,
+            "forecasts": {"quay-mill": 0.1},
+            "commitments": [hours({"assets": [B1]}, due, 0.5)],
+        }
+        document = job([10.0] * 3, store(site="quay"), mill, **asked)
+        assert lone_store.is_possible(instance_of(indexed(document))) is possible
+        if possible is not None:
+            assert (solve(document).outcome == "optimal") is possible
 
 
 def test_hours_without_any_interval_cannot_be() -> None:

@@ -12,7 +12,7 @@ import numpy as np
 
 from workers.planning.assembly import UnitPlan
 from workers.planning.delivery import EXACT_MWH, Deliveries, at_once, deliveries_of, in_sequence
-from workers.planning.instance import Instance
+from workers.planning.instance import Instance, Meter
 from workers.planning.rows import HoursRow
 from workers.planning.store import DayAllowance, Store, whole_intervals
 
@@ -21,12 +21,13 @@ def is_possible(instance: Instance) -> bool | None:
     """Tell whether a lone store can meet its binding rows; None where the answer takes more than energy and hours."""
     if len(instance.units) != 1 or not isinstance(instance.units[0], Store):
         return None
-    sequences = _sequences(instance, instance.units[0])
+    store = _behind_its_meters(instance, instance.units[0])
+    sequences = _sequences(instance, store or instance.units[0])
     if any(_due(row, instance.hours) and not row.intervals for row in _asked(instance)):
         return False
     if not all(_can_be(deliveries) for deliveries in sequences):
         return False
-    return True if len(sequences) == 1 and _is_all_that_matters(instance, instance.units[0]) else None
+    return True if store is not None and len(sequences) == 1 and _is_all_that_matters(instance, store) else None
 
 
 def most_intervals(instance: Instance, row: HoursRow) -> int | None:
@@ -40,7 +41,8 @@ def most_intervals(instance: Instance, row: HoursRow) -> int | None:
         return None
     works, fails = 0, len(row.intervals) + 1
     # what is delivered at once is often the most
-    count = at_once(_sequences(instance, instance.stores[0])[0]).within(row)
+    store = instance.stores[0]
+    count = at_once(_sequences(instance, _behind_its_meters(instance, store) or store)[0]).within(row)
     while fails - works > 1:
         count = min(max(count, works + 1), fails - 1)
         if can_be(count):
@@ -59,6 +61,8 @@ def least_missing(instance: Instance, price_per_hour: Callable[[HoursRow], float
         return None
     store, sequences = instance.units[0], _sequences(instance, instance.units[0])
     if len(sequences) != 1 or len(sequences[0].rows) != 1 or not _is_all_that_matters(instance, store):
+        return None
+    if any(meter.is_limited for meter in _meters(instance)):
         return None
     deliveries = replace(sequences[0], lowest=np.zeros_like(sequences[0].lowest))
     row, counts = deliveries.rows[0], np.arange(deliveries.due + 1)
@@ -92,6 +96,29 @@ def _plan_with(deliveries: Deliveries, count: int) -> UnitPlan:
     return UnitPlan(power, None, {})
 
 
+def _meters(instance: Instance) -> tuple[Meter, ...]:
+    return (*instance.meters, instance.fleet)
+
+
+def _behind_its_meters(instance: Instance, store: Store) -> Store | None:
+    """Narrow a store's limits to what its connections leave beside the loads there.
+
+    None where that is not all that a connection asks: lots, others behind it, a load that the store itself must feed.
+    """
+    for meter in _meters(instance):
+        if not meter.is_limited:
+            continue
+        into, out_of = meter.import_limit_mw - meter.load_mw, meter.export_limit_mw + meter.load_mw
+        if meter.lot_mw is not None or meter.units != (0,) or (into < 0).any() or (out_of < 0).any():
+            return None
+        store = replace(
+            store,
+            charge_limit_mw=np.minimum(store.charge_limit_mw, into),
+            discharge_limit_mw=np.minimum(store.discharge_limit_mw, out_of),
+        )
+    return store
+
+
 def _sequences(instance: Instance, store: Store) -> list[Deliveries]:
     """Take what binds a store's hours of discharge, row after row; one with no rows where nothing does."""
     found = list(deliveries_of(store, _asked(instance), instance.hours, instance.intervals))
@@ -109,7 +136,6 @@ def _is_all_that_matters(instance: Instance, store: Store) -> bool:
         not store.has_states
         and store.ramp_mw is None
         and store.target_price is None
-        and not any(meter.is_limited for meter in (*instance.meters, instance.fleet))
         and len(asked) == sum(row.price is None for row in instance.rows)
         and all(row.min_block <= 1 for row in asked)
         and (not days or all(any(_is_within(row, day) for day in days) for row in asked))
