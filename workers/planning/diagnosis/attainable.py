@@ -1,7 +1,7 @@
 """How far each commitment can be met: the least it must miss with everything else held."""
 
 from collections.abc import Callable, Collection, Iterator, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from math import ceil, floor
 
 from schemas.commitments import Commitment, EnergyAtLeast, EnergyAtMost, HoursAtLeast, HoursAtMost
@@ -26,7 +26,8 @@ CLOSE = 0.02
 class Reached:
     """What a commitment asks in a row and what it can have, in its unit; what else had to be left out for that.
 
-    `plans` are what the units did for it, where a solver found it.
+    `plans` are what the units did for it, where a solver found it. Hours that time did not allow to prove to be the
+    most are not `is_proven`.
     """
 
     row: CommitmentRow
@@ -34,6 +35,16 @@ class Reached:
     attainable: float
     left_out: tuple[Element, ...]
     plans: Earlier
+    is_proven: bool
+
+
+@dataclass(frozen=True)
+class Missing:
+    """What is missing of a row, in its unit, by what the units do, where a solver found it; whether it is the least."""
+
+    amount: float
+    plans: Earlier = field(default_factory=dict)
+    is_least: bool = True
 
 
 def reached(trouble: Trouble, known: Collection[Element], solving: Solving) -> Iterator[Reached]:
@@ -44,14 +55,13 @@ def reached(trouble: Trouble, known: Collection[Element], solving: Solving) -> I
         if row.price is None and row_of(row) in named and row_of(row) not in known:
             left_out = _in_the_way(trouble, row_of(row), trouble.tester(solving))
             required = amount_asked(trouble.scope.question.job.commitments[row.commitment], row, scope.instance.hours)
-            attainable, plans = _attainable(scope, row, required, left_out, solving)
-            yield Reached(row, required, attainable, tuple(left_out), plans)
+            yield _attainable(scope, row, required, left_out, solving)
 
 
 def _attainable(
     scope: Scope, row: CommitmentRow, required: float, left_out: Sequence[Element], solving: Solving
-) -> tuple[float, Earlier]:
-    """Give what a row can have at most (a ceiling: at least), in its unit, with all but `left_out` held; and by what.
+) -> Reached:
+    """Give what a row can have at most (a ceiling: at least), in its unit, with all but `left_out` held.
 
     Hours may be more than are asked where something had to be left out.
     """
@@ -59,8 +69,9 @@ def _attainable(
     if isinstance(row, HoursRow) and left_out:
         asked = replace(row, due_hours=len(row.intervals) * scope.instance.hours)
         more = asked.due_hours - row.due_hours
-    least, plans = solve_shortfall(scope.without(left_out), asked, solving)
-    return max(0.0, required + least if is_ceiling(row) else required + more - least), plans
+    missing = solve_shortfall(scope.without(left_out), asked, solving)
+    had = max(0.0, required + missing.amount if is_ceiling(row) else required + more - missing.amount)
+    return Reached(row, required, had, tuple(left_out), missing.plans, missing.is_least)
 
 
 def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozenset[Element]], bool]) -> list[Element]:
@@ -82,11 +93,10 @@ def _in_the_way(trouble: Trouble, asked: Element, is_possible: Callable[[frozens
     return left_out
 
 
-def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> tuple[float, Earlier]:
-    """Price one row alone, and give the least it can miss, in its unit, with what the units do then; raises CutShort.
+def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) -> Missing:
+    """Price one row alone, and find the schedule that misses least of it; raises CutShort.
 
-    Of nobody is it known what it does where no solver was asked. Power that flows is worth or costs next to nothing,
-    together less than `CLOSE` of a grain either way.
+    Power that flows is worth or costs next to nothing, together less than `CLOSE` of a grain either way.
     """
     hours, grain = instance.hours, grain_of(row, instance.hours)
     rows = tuple(row if row_of(other) == row_of(row) else other for other in instance.rows)
@@ -94,7 +104,7 @@ def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) ->
         solving.require_time()
         most = lone_store.most_intervals(replace(instance, rows=rows), row)
         if most is not None:
-            return max(0.0, row.due_hours - hours * min(most, whole_intervals(row.due_hours, hours))), {}
+            return Missing(max(0.0, row.due_hours - hours * min(most, whole_intervals(row.due_hours, hours))))
     bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
     rows = tuple(replace(row, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
     # hours come in whole intervals: less than one of them open is none
@@ -102,24 +112,17 @@ def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) ->
     found = solving.solve(replace(bare, rows=rows, absolute_gap=gap, relative_gap=1e-9))
     if found.margin is None or found.plans is None:
         raise solving.cut_short()
-    return _told(row, hours, -found.margin, -found.bound, solving), plans_by_unit(instance, found.plans)
-
-
-def _told(row: CommitmentRow, hours: float, missed: float, proven: float, solving: Solving) -> float:
-    """Say what is missing in the steps in which figures are told; raises CutShort where it is not proven that far."""
-    grain = grain_of(row, hours)
+    missed, proven, plans = -found.margin, -found.bound, plans_by_unit(instance, found.plans)
     if isinstance(row, HoursRow):
         had = _most_intervals(row, missed, hours)
-        if had < min(whole_intervals(row.due_hours, hours), floor((row.due_hours - proven) / hours + 2 * CLOSE)):
-            raise solving.cut_short()
-        return max(0.0, row.due_hours - hours * had)
+        most = min(whole_intervals(row.due_hours, hours), floor((row.due_hours - max(proven, 0.0)) / hours + 2 * CLOSE))
+        return Missing(max(0.0, row.due_hours - hours * had), plans, is_least=had >= most)
     if missed - proven > grain / 2:
         raise solving.cut_short()
     if isinstance(row, CeilingRow):
-        if missed <= 2 * CLOSE * grain:
-            return 0.0
-        return max(0.0, hours * floor((row.allowed_hours + missed) / hours + 0.5) - row.allowed_hours)
-    return max(0, ceil(missed / grain - 1.5 * CLOSE)) * grain
+        over = hours * floor((row.allowed_hours + missed) / hours + 0.5) - row.allowed_hours
+        return Missing(0.0 if missed <= 2 * CLOSE * grain else max(0.0, over), plans)
+    return Missing(max(0, ceil(missed / grain - 1.5 * CLOSE)) * grain, plans)
 
 
 def _most_intervals(row: HoursRow, missed_hours: float, hours: float) -> int:

@@ -1,7 +1,7 @@
 """The least changes that make a part possible: one lever where one does, several together where none does alone."""
 
 from collections.abc import Callable, Collection, Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from itertools import combinations
 
 from workers.planning.diagnosis.elements import Element
@@ -37,7 +37,7 @@ class Cure:
     """What is moved together, and what the units do then where a solver found that out."""
 
     moves: tuple[Move, ...]
-    plans: Earlier
+    plans: Earlier = field(default_factory=dict)
 
     @property
     def places(self) -> frozenset[tuple[str, str]]:
@@ -47,9 +47,13 @@ class Cure:
 
 @dataclass(frozen=True)
 class Figure:
-    """Hours or energy that a commitment can have at most, whether asking for no more cures, and what units do then."""
+    """Hours or energy that a commitment can have, at most where that `is_most`, and what the units do then.
+
+    Asking for no more `cures` where nothing else stands in the way.
+    """
 
     attainable: float
+    is_most: bool
     cures: bool
     plans: Earlier
 
@@ -57,25 +61,32 @@ class Figure:
 STRIDE = 4
 """Strides towards a step that cures grow by this factor."""
 
+QUESTION_SHARE = 0.1
+LEAST_QUESTION_SECONDS = 1.0
+"""Whether a step cures may take this share of the time left, or so many seconds; a larger step is tried then."""
+
 
 class CureSearch:
     """The search for the cures of a part; it goes on where it was left, with the time it is given then.
 
-    `reached` are figures of commitments by the pointer of the lever that asks for them.
+    `reached` are figures of commitments by the pointer of the lever that asks for them. It `leaves_open` whether less
+    would do where a step took too long to be judged.
     """
 
     def __init__(self, trouble: Trouble, reached: Mapping[str, Figure]) -> None:
         self.cures: list[Cure] = []
         self.is_done = False
+        self.leaves_open = False
         self._trouble = trouble
         self._reached = reached
-        self._tried: dict[frozenset[tuple[Lever, int]], Possible] = {}
+        self._tried: dict[frozenset[tuple[Lever, int]], Possible | None] = {}
         self._search: Iterator[Cure] | None = None
         self._solving: Solving | None = None
 
     def go_on(self, solving: Solving, most: int | None = None) -> None:
         """Look for cures until there are `most` of them, or no more; raises CutShort."""
         self._solving = solving
+        self._tried = {moved: answer for moved, answer in self._tried.items() if answer is not None}
         if self._search is None:
             self._search = self._all()
         while not self.is_done and (most is None or len(self.cures) < most):
@@ -132,8 +143,9 @@ class CureSearch:
     def _cure(self, steps: Mapping[Lever, int]) -> Cure:
         """Write down steps that were tried and do."""
         moved = {lever: step for lever, step in steps.items() if step > 0}
-        known = self._tried.get(frozenset(moved.items()), Possible(True))
-        return Cure(tuple(Move(lever, step) for lever, step in moved.items()), known.plans)
+        known = self._tried.get(frozenset(moved.items()))
+        moves = tuple(Move(lever, step) for lever, step in moved.items())
+        return Cure(moves) if known is None else Cure(moves, known.plans)
 
     def _needed_at_home(self, lever: Lever, levers: Collection[Lever]) -> int:
         """Give a step below which a lever cannot cure: what a smaller scope of the part needs, all else at its loosest.
@@ -213,12 +225,23 @@ class CureSearch:
         return False
 
     def _is_cured(self, steps: Mapping[Lever, int]) -> bool:
+        """Tell whether some steps are known to cure; where that takes too long to find out they are not."""
         moved = frozenset((lever, step) for lever, step in steps.items() if step)
         if not moved:
             return False
         if moved not in self._tried:
-            self._tried[moved] = self._time().possible(self._at(steps))
-        return self._tried[moved].is_possible
+            self._tried[moved] = self._judged(steps)
+        answer = self._tried[moved]
+        self.leaves_open = self.leaves_open or answer is None
+        return answer is not None and answer.is_possible
+
+    def _judged(self, steps: Mapping[Lever, int]) -> Possible | None:
+        time = self._time()
+        try:
+            return time.possible(self._at(steps), max(LEAST_QUESTION_SECONDS, QUESTION_SHARE * time.seconds_left))
+        except CutShort:
+            time.require_time()
+            return None
 
     def _at(self, steps: Mapping[Lever, int]) -> Instance:
         job = self._trouble.scope.job
@@ -241,11 +264,16 @@ class CureSearch:
         return least_step(cures, hopeless, lever.steps, self._guess(lever))
 
     def _known(self, lever: Lever) -> Cure | None:
-        """Give the step known to be the least that cures: what the only row of a commitment can have at most."""
+        """Give the step known to be the least that cures: what the only row of a commitment can have at most.
+
+        Where it cures and may not be the least, it is as good as tried.
+        """
         step = self._guess(lever)
         if not step or not self._reached[lever.pointer].cures:
             return None
-        return Cure((Move(lever, step),), self._reached[lever.pointer].plans)
+        figure = self._reached[lever.pointer]
+        self._tried.setdefault(frozenset({(lever, step)}), Possible(True, figure.plans))
+        return self._cure({lever: step}) if figure.is_most else None
 
     def _time(self) -> Solving:
         assert self._solving is not None

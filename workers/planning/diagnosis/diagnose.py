@@ -36,7 +36,14 @@ FIRST_REPAIR = 0.45
 
 PATIENCE = 5.0
 LEAST_PATIENCE_SECONDS = 2.0
-"""The search for conflicts beyond the first may take so many times what those took, and so many seconds in any case."""
+"""What comes before the first repair, and the search for conflicts beyond the first, may take so many times what those
+took, and so many seconds in any case; there is a second go at all but the conflicts."""
+
+FIRST_CURES = 3.0
+"""The first change that would do may take so many times the patience with further conflicts."""
+
+LEAST = "least"
+"""What is cut off where a step of a lever took too long to be judged."""
 
 MOST_CONFLICTS = 50
 """Conflicts of one part after which the search for more ends."""
@@ -46,12 +53,14 @@ MOST_CONFLICTS = 50
 class Findings:
     """What a diagnosis knows so far.
 
-    `cut_off` says what time did not suffice for, `refused` how many repairs the audit did not pass.
+    `reached` is what commitments can have at most, `had` what they can have and perhaps more. `cut_off` says what time
+    did not suffice for, `refused` how many repairs the audit did not pass.
     """
 
     question: Question
     troubles: list[Trouble] = field(default_factory=list)
     reached: list[Reached] = field(default_factory=list)
+    had: list[Reached] = field(default_factory=list)
     searches: list[CureSearch] = field(default_factory=list)
     repairs: list[Repair] = field(default_factory=list)
     tried: set[Joined] = field(default_factory=set)
@@ -83,10 +92,10 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
 
     first = step("where", 0.05, lambda s: _find_parts(found, proven, s))
     first += step("conflicts", 0.1, lambda s: _find_conflicts(found, s))
-    step("attainable", 0.2, lambda s: _find_reached(found, s))
-    step("cures", 0.3, lambda s: _find_cures(found, s, 1))
-    step("repairs", 0.4, lambda s: _find_repairs(found, planner, s, FIRST_REPAIR))
     patience = max(LEAST_PATIENCE_SECONDS, PATIENCE * first)
+    step("attainable", 0.2, lambda s: _find_reached(found, s), patience)
+    step("cures", 0.3, lambda s: _find_cures(found, s, 1), FIRST_CURES * patience)
+    step("repairs", 0.4, lambda s: _find_repairs(found, planner, s, FIRST_REPAIR))
     step("more conflicts", 0.5, lambda s: _search_further(found, s), patience)
     step("attainable", 0.6, lambda s: _find_reached(found, s))
     step("cures", 0.7, lambda s: _find_cures(found, s, None))
@@ -108,9 +117,12 @@ def _find_conflicts(found: Findings, solving: Solving) -> None:
 
 
 def _find_reached(found: Findings, solving: Solving) -> None:
+    found.had = []
     for trouble in found.troubles:
         for one in reached(trouble, {row_of(one.row) for one in found.reached}, solving):
-            found.reached.append(one)
+            (found.reached if one.is_proven else found.had).append(one)
+    if found.had:
+        raise CutShort("what can be had is not known to be the most")
 
 
 def _find_cures(found: Findings, solving: Solving, most: int | None) -> None:
@@ -118,6 +130,8 @@ def _find_cures(found: Findings, solving: Solving, most: int | None) -> None:
         found.searches = [CureSearch(trouble, _reached_by_lever(found, trouble)) for trouble in found.troubles]
     for search in found.searches:
         search.go_on(solving, most)
+    if LEAST not in found.cut_off and any(search.leaves_open for search in found.searches):
+        found.cut_off.append(LEAST)
 
 
 def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, Figure]:
@@ -127,14 +141,14 @@ def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, Figure]:
     """
     rows = Counter(row.commitment for row in trouble.scope.instance.rows)
     figures: dict[str, Figure] = {}
-    for one in found.reached:
+    for one in (*found.reached, *found.had):
         if is_ceiling(one.row):
             continue
         is_hours = isinstance(one.row, HoursRow)
         place = f"{one.row.pointer}/{'hours' if is_hours else 'energy_mwh'}"
         cures = is_hours and rows[one.row.commitment] == 1 and not one.left_out
         if place not in figures or one.attainable < figures[place].attainable:
-            figures[place] = Figure(one.attainable, cures, one.plans)
+            figures[place] = Figure(one.attainable, one.is_proven, cures, one.plans)
     return figures
 
 

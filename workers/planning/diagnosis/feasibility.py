@@ -90,8 +90,11 @@ class Solving:
         """Tell whether an instance has any schedule; raises CutShort where time does not decide it."""
         return self.possible(instance).is_possible
 
-    def possible(self, instance: Instance) -> "Possible":
-        """Tell whether an instance has any schedule, and give one where a solver found it; raises CutShort."""
+    def possible(self, instance: Instance, most: float = inf) -> "Possible":
+        """Tell whether an instance has any schedule, and give one where a solver found it.
+
+        Raises CutShort where the time left, or `most` seconds of it, does not decide it.
+        """
         self.require_time()
         alone = lone_store.is_possible(instance)
         if alone is not None:
@@ -100,7 +103,7 @@ class Solving:
             return Possible(False)
         if not instance.units and not instance.rows:
             return Possible(True)
-        found = self.solve(without_money(instance), any_will_do=True)
+        found = self.solve(without_money(instance), most, any_will_do=True)
         if found.plans is not None:
             return Possible(True, plans_by_unit(instance, found.plans))
         if found.stopped is Stopped.INFEASIBLE:

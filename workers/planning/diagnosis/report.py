@@ -7,7 +7,7 @@ from schemas.cautions import CAUTIONS
 from schemas.diagnosis import Attainable, Conflict, Diagnosis, Member, NearestSchedule, Repair, Shortfall
 from schemas.schedule import Schedule
 from workers.planning.diagnosis.attainable import Reached, unit_of
-from workers.planning.diagnosis.diagnose import Findings
+from workers.planning.diagnosis.diagnose import LEAST, Findings
 from workers.planning.diagnosis.elements import Element
 from workers.planning.diagnosis.words import summary_of
 
@@ -16,6 +16,7 @@ CUT_OFF = {
     "conflicts": "the search for the conflicts",
     "attainable": "how far each commitment can be met",
     "cures": "the search for changes that would do",
+    LEAST: "whether smaller or other changes would do",
     "repairs": "the planning of every repair",
     "nearest": "the nearest schedule",
     "more conflicts": "the search for further conflicts",

@@ -1,6 +1,7 @@
 """Whether anything is possible at all: whichever solver says so, the oracle and the audit agree."""
 
 from collections import Counter
+from dataclasses import replace
 from time import monotonic
 from typing import Any
 
@@ -17,6 +18,7 @@ from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.extraction import decision_of
 from workers.planning.instance import instance_of
 from workers.planning.limits import Limits, StoppableWatch, Unwatched, Watch
+from workers.planning.rows import HoursRow
 from workers.planning.solvers import cp_sat, highs
 from workers.planning.solvers.ending import Ending, Stopped
 
@@ -97,14 +99,23 @@ def test_nothing_is_said_when_there_is_no_time_or_a_stop_is_asked() -> None:
             late.is_possible(instance)
 
 
+def _particular() -> Document:
+    """Return a store with least powers, a ramp and blocks that an outage keeps from half of its hours."""
+    asked = [hours({"assets": ["quay-b1"]}, 4, 0.5, min_block_hours=2.0)]
+    bound = store(min_discharge_mw=0.3, min_charge_mw=0.3, ramp_mw_per_hour=0.9, charge_efficiency=0.9)
+    trip = outage("quay-b1", 2, 6) | {"kind": "planned"}
+    return job([10.0, 30, 20, 50, 10, 40, 15, 60], bound, stored=0.5, commitments=asked, outages=[trip])
+
+
+def _diagnosed(document: Document) -> Diagnosis:
+    found = answer(document)
+    assert isinstance(found, Diagnosis)
+    return found
+
+
 def test_a_repair_is_offered_even_if_its_planning_has_no_time_to_search(monkeypatch: pytest.MonkeyPatch) -> None:
     # what showed that the change cures is a schedule already, and the LP relaxation has a bound for it
-    asked = [hours({"assets": ["quay-b1"]}, 4, 0.5, min_block_hours=2.0)]
-    particular = store(min_discharge_mw=0.3, min_charge_mw=0.3, ramp_mw_per_hour=0.9, charge_efficiency=0.9)
-    trip = outage("quay-b1", 2, 6) | {"kind": "planned"}
-    document = job([10.0, 30, 20, 50, 10, 40, 15, 60], particular, stored=0.5, commitments=asked, outages=[trip])
-    whole = answer(document)
-    assert isinstance(whole, Diagnosis)
+    whole = _diagnosed(_particular())
     true_solve = highs.solve
 
     def hurried(matrix: highs.Matrix, effort: highs.Effort, watch: Watch) -> Ending:
@@ -113,8 +124,50 @@ def test_a_repair_is_offered_even_if_its_planning_has_no_time_to_search(monkeypa
         return true_solve(matrix, effort, watch)
 
     monkeypatch.setattr(highs, "solve", hurried)
-    found = answer(document)
-    assert isinstance(found, Diagnosis)
+    found = _diagnosed(_particular())
     assert {repair.text for repair in found.repairs} == {repair.text for repair in whole.repairs}
     assert all(repair.margin_bound >= repair.margin for repair in found.repairs)
     assert len(found.repairs) > 2
+
+
+def test_hours_that_are_not_proven_to_be_the_most_are_a_repair_and_no_figure(monkeypatch: pytest.MonkeyPatch) -> None:
+    whole = _diagnosed(_particular())
+    assert [row.attainable_hours for row in whole.attainable] == [2.0]
+    true_solve = highs.solve
+
+    def unproven(matrix: highs.Matrix, effort: highs.Effort, watch: Watch) -> Ending:
+        ending = true_solve(matrix, effort, watch)
+        if matrix.integer.any() and effort.relative_gap == 1e-9 and effort.absolute_gap > 0.5:
+            return replace(ending, stopped=Stopped.OUT_OF_TIME, bound=0.0)
+        return ending
+
+    monkeypatch.setattr(highs, "solve", unproven)
+    found = _diagnosed(_particular())
+    assert found.attainable == []
+    assert "how far each commitment can be met" in found.cut_off
+    assert not found.complete
+    assert {repair.text for repair in found.repairs} == {repair.text for repair in whole.repairs}
+
+
+def test_a_step_that_takes_too_long_to_be_judged_gives_way_to_a_larger_one(monkeypatch: pytest.MonkeyPatch) -> None:
+    # two hours of charging at 0.6 MW are 1.2 MWh for four hours: 0.3 MW, and 0.2 where more takes too long
+    asked = hours({"assets": ["quay-b1"]}, 4, 0.5, **{"from": "2027-02-09T01:00:00Z"})
+    weak = store(min_discharge_mw=0.1, min_charge_mw=0.1, charge_limit_mw=0.6)
+    document = job([10.0] * 6, weak, commitments=[asked])
+    whole = _diagnosed(document)
+    assert whole.cut_off == []
+    true_possible = Solving.possible
+
+    def slow(self: Solving, instance: Any, most: float = float("inf")) -> Any:
+        if most < float("inf") and any(isinstance(row, HoursRow) and row.threshold_mw > 0.2 for row in instance.rows):
+            raise CutShort("too long")
+        return true_possible(self, instance, most)
+
+    monkeypatch.setattr(Solving, "possible", slow)
+    found = _diagnosed(document)
+    assert found.cut_off == ["whether smaller or other changes would do"]
+    assert not found.complete
+    lowered = [repair for repair in found.repairs if repair.change.pointer.endswith("threshold/mw")]
+    least = [repair for repair in whole.repairs if repair.change.pointer.endswith("threshold/mw")]
+    assert [repair.change.to for repair in lowered] == [0.2]
+    assert [repair.change.to for repair in least] == [0.3]
