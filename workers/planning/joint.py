@@ -319,7 +319,8 @@ def solve_jointly(
 ) -> Solution:
     """Plan all units of an instance in one model; `everywhere` puts in every binary from the start.
 
-    `earlier` is what the units did in an earlier schedule; one that does not fit the instance is passed over.
+    `earlier` is what the units did in an earlier schedule; one that does not fit the instance is passed over. With
+    `any_will_do` the question is only whether anything is possible: the instance's gap is as wide as any.
     """
     apart = [where | np.bool_(everywhere) for where in where_mixing_may_pay(instance)]
     search = _Search(
