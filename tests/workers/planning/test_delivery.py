@@ -342,7 +342,7 @@ def _missing(instance: Instance, plan: UnitPlan) -> float:
 
 def test_the_least_that_is_missing_is_what_a_solver_finds(monkeypatch: pytest.MonkeyPatch) -> None:
     compared = 0
-    for seed in range(60):
+    for seed in range(120):
         instance = instance_of(indexed(tight_request(seed)))
         plan = lone_store.least_missing(instance, lambda row: row.threshold_mw)
         if plan is None or lone_store.is_possible(instance) is not False:
