@@ -36,11 +36,12 @@ FIRST_REPAIR = 0.45
 
 PATIENCE = 5.0
 LEAST_PATIENCE_SECONDS = 2.0
-"""What comes before the first repair, and the search for conflicts beyond the first, may take so many times what those
-took, and so many seconds in any case; there is a second go at all but the conflicts."""
+"""The search for conflicts beyond the first may take so many times what those took, and so many seconds in any case."""
 
+FIRST_FIGURES = 2.0
 FIRST_CURES = 3.0
-"""The first change that would do may take so many times the patience with further conflicts."""
+"""What can be had, and the first change that would do, may take so many times that patience before the first repair;
+after it they have another go."""
 
 LEAST = "least"
 """What is cut off where a step of a lever took too long to be judged."""
@@ -93,7 +94,7 @@ def diagnose(question: Question, proven: Collection[tuple[str, ...]], audited: A
     first = step("where", 0.05, lambda s: _find_parts(found, proven, s))
     first += step("conflicts", 0.1, lambda s: _find_conflicts(found, s))
     patience = max(LEAST_PATIENCE_SECONDS, PATIENCE * first)
-    step("attainable", 0.2, lambda s: _find_reached(found, s), patience)
+    step("attainable", 0.2, lambda s: _find_reached(found, s), FIRST_FIGURES * patience)
     step("cures", 0.3, lambda s: _find_cures(found, s, 1), FIRST_CURES * patience)
     step("repairs", 0.4, lambda s: _find_repairs(found, planner, s, FIRST_REPAIR))
     step("more conflicts", 0.5, lambda s: _search_further(found, s), patience)
