@@ -83,6 +83,18 @@ class CureSearch:
         self._search: Iterator[Cure] | None = None
         self._solving: Solving | None = None
 
+    def learn(self, reached: Mapping[str, Figure]) -> None:
+        """Take over what is known by now; a cure that asks for fewer hours than can be had is looked for anew."""
+        self._reached = reached
+        lasting = [cure for cure in self.cures if not self._is_outdone(cure)]
+        if len(lasting) < len(self.cures):
+            self.cures, self._search, self.is_done = lasting, None, False
+
+    def _is_outdone(self, cure: Cure) -> bool:
+        [move, *others] = cure.moves
+        known = None if others else self._known(move.lever)
+        return known is not None and known.moves != cure.moves
+
     def go_on(self, solving: Solving, most: int | None = None) -> None:
         """Look for cures until there are `most` of them, or no more; raises CutShort."""
         self._solving = solving

@@ -15,7 +15,7 @@ from workers.planning.diagnosis.cures import CureSearch, Figure
 from workers.planning.diagnosis.feasibility import CutShort, Solving
 from workers.planning.diagnosis.localise import Trouble, find_conflicts, search_further, troubles_of
 from workers.planning.diagnosis.nearest import Nearest, nearest
-from workers.planning.diagnosis.repairs import Joined, repairs_of
+from workers.planning.diagnosis.repairs import Joined, place_of, repairs_of
 from workers.planning.diagnosis.scope import Question, row_of
 from workers.planning.parts import independent_parts
 from workers.planning.rows import HoursRow
@@ -63,12 +63,16 @@ class Findings:
     reached: list[Reached] = field(default_factory=list)
     had: list[Reached] = field(default_factory=list)
     searches: list[CureSearch] = field(default_factory=list)
-    repairs: list[Repair] = field(default_factory=list)
-    tried: set[Joined] = field(default_factory=set)
+    planned: dict[Joined, Repair | None] = field(default_factory=dict)
     nearest: Nearest | None = None
     no_nearest: str | None = None
     cut_off: list[str] = field(default_factory=list)
     refused: int = 0
+
+    @property
+    def repairs(self) -> list[Repair]:
+        """What was planned and has a schedule."""
+        return [repair for repair in self.planned.values() if repair is not None]
 
     @property
     def is_complete(self) -> bool:
@@ -127,8 +131,11 @@ def _find_reached(found: Findings, solving: Solving) -> None:
 
 
 def _find_cures(found: Findings, solving: Solving, most: int | None) -> None:
+    figures = [_reached_by_lever(found, trouble) for trouble in found.troubles]
     if not found.searches:
-        found.searches = [CureSearch(trouble, _reached_by_lever(found, trouble)) for trouble in found.troubles]
+        found.searches = [CureSearch(trouble, known) for trouble, known in zip(found.troubles, figures, strict=True)]
+    for search, known in zip(found.searches, figures, strict=True):
+        search.learn(known)
     for search in found.searches:
         search.go_on(solving, most)
     if LEAST not in found.cut_off and any(search.leaves_open for search in found.searches):
@@ -155,9 +162,12 @@ def _reached_by_lever(found: Findings, trouble: Trouble) -> dict[str, Figure]:
 
 def _find_repairs(found: Findings, planner: Planner, solving: Solving, done: float) -> None:
     cures = [search.cures for search in found.searches]
-    for repair in repairs_of(found.question, cures, planner, solving, found.tried):
-        found.repairs.append(repair)
-        solving.watch.progress("diagnosing", done)
+    for joined, repair in repairs_of(found.question, cures, planner, solving, found.planned):
+        found.planned[joined] = repair
+        if repair is not None:
+            solving.watch.progress("diagnosing", done)
+    known = {place_of(move) for search in found.searches for cure in search.cures for move in cure.moves}
+    found.planned = {joined: repair for joined, repair in found.planned.items() if joined <= known}
 
 
 def _find_nearest(found: Findings, planner: Planner, solving: Solving) -> None:

@@ -1,6 +1,6 @@
 """Repairs: cures written as patches of the request, planned once more, and only then offered."""
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Collection, Iterator, Sequence
 
 from schemas.diagnosis import Change, Repair
 from workers.planning.diagnosis.again import Planner
@@ -24,48 +24,56 @@ def repairs_of(
     cures: Sequence[Sequence[Cure]],
     planner: Planner,
     solving: Solving,
-    tried: set[Joined],
-) -> Iterator[Repair]:
-    """Plan the request with each cure (one of every part that needs one) in place, but for those tried before.
+    known: Collection[Joined],
+) -> Iterator[tuple[Joined, Repair | None]]:
+    """Plan the request with each cure (one of every part that needs one) in place, but for those known already.
 
-    What the units did when the cure was found is the start. Raises CutShort when all were tried and time did not decide
-    some.
+    None stands for one that has no schedule. What the units did when the cure was found is the start. Raises CutShort
+    when all were tried and time did not decide some.
     """
     if not cures or not all(cures):
         return
     document, undecided = document_of(question.job), False
     for chosen in _together(cures):
         moves = _joined(chosen)
-        joined = frozenset((move.lever.pointer, move.lever.unit, move.step) for move in moves)
-        if joined in tried:
+        joined = frozenset(place_of(move) for move in moves)
+        if joined in known:
             continue
-        tried.add(joined)
         values: Values = {}
         for move in moves:
             values |= move.values
         operations = patch_of(document, values)
         job = patched_job(document, operations)
-        known = {unit: plan for cure in chosen for unit, plan in cure.plans.items()}
+        earlier = {unit: plan for cure in chosen for unit, plan in cure.plans.items()}
         try:
             wide = job.model_copy(update={"relative_gap": max(job.relative_gap, GAP)})
-            schedule = planner.plan(wide, solving, known)
+            schedule = planner.plan(wide, solving, earlier)
         except CutShort:
             undecided = True
             continue
         if schedule is None or schedule.margin_bound is None:
+            yield joined, None
             continue
         changes = [_change(move) for move in moves]
-        yield Repair(
-            text="; ".join(move.lever.words(move.step) for move in moves),
-            change=changes[0],
-            changes=changes,
-            patch=operations,
-            verified=True,
-            margin=schedule.margin,
-            margin_bound=schedule.margin_bound,
+        yield (
+            joined,
+            Repair(
+                text="; ".join(move.lever.words(move.step) for move in moves),
+                change=changes[0],
+                changes=changes,
+                patch=operations,
+                verified=True,
+                margin=schedule.margin,
+                margin_bound=schedule.margin_bound,
+            ),
         )
     if undecided:
         raise solving.cut_short()
+
+
+def place_of(move: Move) -> tuple[str, str, int]:
+    """Name what is moved, and to which step."""
+    return move.lever.pointer, move.lever.unit, move.step
 
 
 def _together(cures: Sequence[Sequence[Cure]]) -> Iterator[list[Cure]]:

@@ -171,3 +171,32 @@ def test_a_step_that_takes_too_long_to_be_judged_gives_way_to_a_larger_one(monke
     least = [repair for repair in whole.repairs if repair.change.pointer.endswith("threshold/mw")]
     assert [repair.change.to for repair in lowered] == [0.2]
     assert [repair.change.to for repair in least] == [0.3]
+
+
+def test_hours_that_turn_out_to_be_more_take_the_place_of_a_repair_with_fewer(monkeypatch: pytest.MonkeyPatch) -> None:
+    true_solve, asked = highs.solve, []
+
+    def poor_at_first(matrix: highs.Matrix, effort: highs.Effort, watch: Watch) -> Ending:
+        if not (matrix.integer.any() and effort.relative_gap == 1e-9 and effort.absolute_gap > 0.5):
+            return true_solve(matrix, effort, watch)
+        asked.append(matrix)
+        if len(asked) > 1:
+            return true_solve(matrix, effort, watch)
+        worst = true_solve(replace(matrix, money=-matrix.money), effort, watch)
+        assert worst.values is not None
+        margin = float(matrix.money @ worst.values) + matrix.constant
+        return replace(worst, stopped=Stopped.OUT_OF_TIME, margin=margin, bound=0.0)
+
+    def slow(self: Solving, instance: Any, most: float = float("inf")) -> Any:
+        if most < float("inf"):
+            raise CutShort("too long")
+        return true_possible(self, instance, most)
+
+    true_possible = Solving.possible
+    monkeypatch.setattr(highs, "solve", poor_at_first)
+    monkeypatch.setattr(Solving, "possible", slow)
+    found = _diagnosed(_particular())
+    assert len(asked) == 2
+    assert [row.attainable_hours for row in found.attainable] == [2.0]
+    assert [(repair.change.pointer, repair.change.to) for repair in found.repairs] == [("/commitments/0/hours", 2.0)]
+    assert found.cut_off == ["whether smaller or other changes would do"]
