@@ -146,7 +146,7 @@ def assemble(
     for more in tangents:
         generator = columns.generators[more.generator]
         model.rows(0.0, INFINITE, *fuel_cost.tangent(generator, more.where, more.points_mw))
-    for meter in (*instance.meters, instance.fleet):
+    for meter in instance.connections:
         connection_limits.add(model, columns, meter)
         lots.add(model, columns, meter)
     settlement.add(model, columns)

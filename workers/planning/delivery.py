@@ -153,13 +153,12 @@ def in_sequence(store: Store, rows: Sequence[HoursRow], hours: float, intervals:
 
 @dataclass(frozen=True)
 class AtOnce:
-    """What a store does that counts whenever it can and charges elsewhere: where it counts, and what is left, MWh.
+    """Where a store counts that delivers whenever it can and charges elsewhere, T values.
 
     `is_schedule` tells whether it stays above its floor and meets its final target.
     """
 
     counted: Booleans
-    final_mwh: float
     is_schedule: bool
 
     def within(self, row: HoursRow) -> int:
@@ -188,4 +187,4 @@ def at_once(deliveries: Deliveries) -> AtOnce:
         is_above = is_above and floor - EXACT_MWH <= stored <= ceiling + EXACT_MWH
         counted.append(delivers or excused)
     is_schedule = is_above and stored >= store.final_floor_mwh - EXACT_MWH
-    return AtOnce(np.array(counted, dtype=bool), stored, is_schedule)
+    return AtOnce(np.array(counted, dtype=bool), is_schedule)

@@ -88,6 +88,11 @@ class Instance:
         return bool((self.buy == self.sell).all())
 
     @property
+    def connections(self) -> tuple[Meter, ...]:
+        """Every meter, and the fleet as one."""
+        return (*self.meters, self.fleet)
+
+    @property
     def stores(self) -> tuple[Store, ...]:
         """The units that are stores."""
         return tuple(unit for unit in self.units if isinstance(unit, Store))

@@ -29,7 +29,7 @@ def _refusals(instance: Instance) -> Iterator[str]:
     for row in instance.rows:
         if isinstance(row, HoursRow) and row.price is None:
             yield from _hours(instance, row)
-    for meter in (*instance.meters, instance.fleet):
+    for meter in instance.connections:
         yield from _connection(instance, meter)
 
 

@@ -99,17 +99,17 @@ def solve_shortfall(instance: Instance, row: CommitmentRow, solving: Solving) ->
     Power that flows is worth or costs next to nothing, together less than `CLOSE` of a grain either way.
     """
     hours, grain = instance.hours, grain_of(row, instance.hours)
-    rows = tuple(row if row_of(other) == row_of(row) else other for other in instance.rows)
     if isinstance(row, HoursRow):
         solving.require_time()
+        rows = tuple(row if row_of(other) == row_of(row) else other for other in instance.rows)
         most = lone_store.most_intervals(replace(instance, rows=rows), row)
         if most is not None:
             return Missing(max(0.0, row.due_hours - hours * min(most, whole_intervals(row.due_hours, hours))))
     bare = without_money(instance, CLOSE * grain / (3 * most_energy(instance) + 1))
-    rows = tuple(replace(row, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
+    priced = tuple(replace(row, price=1.0) if row_of(other) == row_of(row) else other for other in bare.rows)
     # hours come in whole intervals: less than one of them open is none
     gap = grain * (1 - 5 * CLOSE if isinstance(row, HoursRow) else CLOSE)
-    found = solving.solve(replace(bare, rows=rows, absolute_gap=gap, relative_gap=1e-9))
+    found = solving.solve(replace(bare, rows=priced, absolute_gap=gap, relative_gap=1e-9))
     if found.margin is None or found.plans is None:
         raise solving.cut_short()
     missed, proven, plans = -found.margin, -found.bound, plans_by_unit(instance, found.plans)

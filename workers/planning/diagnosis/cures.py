@@ -69,22 +69,24 @@ LEAST_QUESTION_SECONDS = 1.0
 class CureSearch:
     """The search for the cures of a part; it goes on where it was left, with the time it is given then.
 
-    `reached` are figures of commitments by the pointer of the lever that asks for them. It `leaves_open` whether less
-    would do where a step took too long to be judged.
+    It `leaves_open` whether less would do where a step took too long to be judged.
     """
 
-    def __init__(self, trouble: Trouble, reached: Mapping[str, Figure]) -> None:
+    def __init__(self, trouble: Trouble) -> None:
         self.cures: list[Cure] = []
         self.is_done = False
         self.leaves_open = False
         self._trouble = trouble
-        self._reached = reached
+        self._reached: Mapping[str, Figure] = {}
         self._tried: dict[frozenset[tuple[Lever, int]], Possible | None] = {}
         self._search: Iterator[Cure] | None = None
         self._solving: Solving | None = None
 
     def learn(self, reached: Mapping[str, Figure]) -> None:
-        """Take over what is known by now; a cure that asks for fewer hours than can be had is looked for anew."""
+        """Take over the figures of commitments known by now, by the pointer of the lever that asks for them.
+
+        A cure that asks for fewer hours than can be had is looked for anew.
+        """
         self._reached = reached
         lasting = [cure for cure in self.cures if not self._is_outdone(cure)]
         if len(lasting) < len(self.cures):

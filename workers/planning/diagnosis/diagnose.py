@@ -131,11 +131,10 @@ def _find_reached(found: Findings, solving: Solving) -> None:
 
 
 def _find_cures(found: Findings, solving: Solving, most: int | None) -> None:
-    figures = [_reached_by_lever(found, trouble) for trouble in found.troubles]
     if not found.searches:
-        found.searches = [CureSearch(trouble, known) for trouble, known in zip(found.troubles, figures, strict=True)]
-    for search, known in zip(found.searches, figures, strict=True):
-        search.learn(known)
+        found.searches = [CureSearch(trouble) for trouble in found.troubles]
+    for search, trouble in zip(found.searches, found.troubles, strict=True):
+        search.learn(_reached_by_lever(found, trouble))
     for search in found.searches:
         search.go_on(solving, most)
     if LEAST not in found.cut_off and any(search.leaves_open for search in found.searches):

@@ -26,6 +26,14 @@ class CutShort(Exception):  # noqa: N818 - it says that there is no time left, n
     """Time ran out, or the caller asked to stop, before a question was decided."""
 
 
+@dataclass(frozen=True)
+class Possible:
+    """Whether something is possible, and what the units did where a solver found that out."""
+
+    is_possible: bool
+    plans: Earlier = field(default_factory=dict)
+
+
 @dataclass
 class Solving:
     """What a diagnosis may take: its limits, and until when it may ask solvers."""
@@ -90,7 +98,7 @@ class Solving:
         """Tell whether an instance has any schedule; raises CutShort where time does not decide it."""
         return self.possible(instance).is_possible
 
-    def possible(self, instance: Instance, most: float = inf) -> "Possible":
+    def possible(self, instance: Instance, most: float = inf) -> Possible:
         """Tell whether an instance has any schedule, and give one where a solver found it.
 
         Raises CutShort where the time left, or `most` seconds of it, does not decide it.
@@ -109,14 +117,6 @@ class Solving:
         if found.stopped is Stopped.INFEASIBLE:
             return Possible(False)
         raise self.cut_short()
-
-
-@dataclass(frozen=True)
-class Possible:
-    """Whether something is possible, and what the units did where a solver found that out."""
-
-    is_possible: bool
-    plans: Earlier = field(default_factory=dict)
 
 
 def without_money(instance: Instance, small: float = 1.0) -> Instance:

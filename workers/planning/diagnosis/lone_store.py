@@ -12,7 +12,7 @@ import numpy as np
 
 from workers.planning.assembly import UnitPlan
 from workers.planning.delivery import EXACT_MWH, Deliveries, at_once, deliveries_of, in_sequence
-from workers.planning.instance import Instance, Meter
+from workers.planning.instance import Instance
 from workers.planning.rows import HoursRow
 from workers.planning.store import DayAllowance, Store, whole_intervals
 
@@ -62,7 +62,7 @@ def least_missing(instance: Instance, price_per_hour: Callable[[HoursRow], float
     store, sequences = instance.units[0], _sequences(instance, instance.units[0])
     if len(sequences) != 1 or len(sequences[0].rows) != 1 or not _is_all_that_matters(instance, store):
         return None
-    if any(meter.is_limited for meter in _meters(instance)):
+    if any(meter.is_limited for meter in instance.connections):
         return None
     deliveries = replace(sequences[0], lowest=np.zeros_like(sequences[0].lowest))
     row, counts = deliveries.rows[0], np.arange(deliveries.due + 1)
@@ -96,16 +96,12 @@ def _plan_with(deliveries: Deliveries, count: int) -> UnitPlan:
     return UnitPlan(power, None, {})
 
 
-def _meters(instance: Instance) -> tuple[Meter, ...]:
-    return (*instance.meters, instance.fleet)
-
-
 def _behind_its_meters(instance: Instance, store: Store) -> Store | None:
     """Narrow a store's limits to what its connections leave beside the loads there.
 
     None where that is not all that a connection asks: lots, others behind it, a load that the store itself must feed.
     """
-    for meter in _meters(instance):
+    for meter in instance.connections:
         if not meter.is_limited:
             continue
         into, out_of = meter.import_limit_mw - meter.load_mw, meter.export_limit_mw + meter.load_mw

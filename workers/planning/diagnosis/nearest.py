@@ -155,7 +155,7 @@ def _missing(question: Question, part: Instance, plans: Sequence[UnitPlan]) -> I
     for unit, plan in zip(part.units, plans, strict=True):
         if isinstance(unit, Store):
             yield from _missing_of_target(unit, final_energy(unit, plan, part.hours))
-    for meter in (*part.meters, part.fleet):
+    for meter in part.connections:
         places = {element.name: element.pointer for element in question.of_meters.get(meter.id, ())}
         yield from _beyond_limits(meter, raised(meter, plans, part), places)
 
